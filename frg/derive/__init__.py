@@ -1,0 +1,1 @@
+"""Truncation -> FlowEquations: loops in flat space, and flows typed in directly."""

@@ -1,0 +1,1 @@
+"""Loops in flat space on a constant background."""

@@ -1,0 +1,1 @@
+"""Flows given directly in the truncation file."""

@@ -1,0 +1,1 @@
+"""FlowEquations -> Flow: number systems, discretisations, compilation."""

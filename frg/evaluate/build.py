@@ -1,0 +1,287 @@
+"""FlowEquations -> Flow: choose the discretisation the truncation asks for, and fill its arguments."""
+
+from __future__ import annotations
+
+import math
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+
+from frg.derive import symbols
+from frg.derive.equations import FlowEquations, FunctionFlow
+from frg.errors import InputError, NotYet, Place
+from frg.evaluate.discretisation import AbstractDiscretisation
+from frg.evaluate.fieldpolynomial import FieldPolynomial, choose_pivots
+from frg.evaluate.flow import Arguments, Flow, Rule
+from frg.evaluate.grid import ChebyshevGrid
+from frg.evaluate.jaxload import load
+from frg.evaluate.series import series_arithmetic
+from frg.evaluate.taylor import Taylor, TaylorFunction
+from frg.language.program import compile_expressions
+from frg.language.truncation import RunningFunction
+
+if TYPE_CHECKING:
+    import sympy
+
+
+def build_flow(equations: FlowEquations, orders: tuple[int, ...]) -> Flow:
+    """The flow padded for all `orders` of the order symbol (empty where the truncation has none)."""
+    block = _block(equations, orders)
+    expressions = {f.name: f.rhs for f in equations.functions}
+    if equations.potential is not None:
+        expressions = {equations.potential.name: equations.potential.rhs}
+    expressions |= {c.name: c.rhs for c in equations.couplings}
+    reading_minimum = any(isinstance(a.at, str) for a in equations.anomalous)
+    moving = block is not None and isinstance(block, Taylor) and block.moving
+    return Flow(
+        equations=equations,
+        block=block,
+        couplings=tuple(c.name for c in equations.couplings),
+        minimum_function=equations.anomalous[0].function if reading_minimum and not moving else None,
+        rhs=compile_expressions(list(expressions.values())),
+        rhs_names=tuple(expressions),
+        subtract=_rule_subtracts(equations),
+    )
+
+
+def _block(equations: FlowEquations, orders: tuple[int, ...]) -> AbstractDiscretisation | None:
+    if equations.potential is not None:
+        return _field_polynomial(equations, orders)
+    if not equations.functions:
+        return None
+    grids = [f.declared.grid for f in equations.functions]
+    if any(grids):
+        return _grid(equations)
+    return _taylor(equations, orders)
+
+
+def _place(equations: FlowEquations) -> Place:
+    return Place(source=equations.truncation.source)
+
+
+def _grid(equations: FlowEquations) -> ChebyshevGrid:
+    flows = equations.functions
+    grids = {f.declared.grid for f in flows}
+    if len(grids) != 1 or None in grids or any(len(f.coordinates) != 1 for f in flows):
+        raise NotYet(
+            "a grid in several coordinates, or different grids for different functions",
+            remedy="give all functions the same grid over one coordinate",
+            place=_place(equations),
+        )
+    (grid,) = grids
+    assert grid is not None
+    return ChebyshevGrid(
+        coordinate=flows[0].coordinates[0], functions=tuple(f.name for f in flows), points=grid.points,
+        jets={f.name: f.jets for f in flows},
+    )
+
+
+def degree_table(function: RunningFunction, equations: FlowEquations, orders: tuple[int, ...]) -> dict[int, int]:
+    """Highest power kept, by value of the order symbol; {0: degree} where the order is a plain number."""
+    import sympy
+
+    values = dict(equations.truncation.parameters)
+    symbol = sympy.Symbol(equations.truncation.study.order)
+    assert function.order is not None
+    if not orders or symbol not in function.order.free_symbols:
+        degree = int(function.order.subs(values))
+        return dict.fromkeys(orders, degree) if orders else {0: degree}
+    return {n: int(function.order.subs(symbol, n).subs(values)) for n in orders}
+
+
+def _taylor(equations: FlowEquations, orders: tuple[int, ...]) -> Taylor:
+    flows = equations.functions
+    abouts = [f.declared.about for f in flows]
+    moving = abouts[0] == "minimum"
+    if any((a == "minimum") != moving for a in abouts) or len({str(a) for a in abouts}) != 1:
+        raise NotYet(
+            "running functions expanded about different points",
+            remedy="give all functions the same about", place=_place(equations),
+        )
+    if moving and len(flows[0].coordinates) != 1:
+        raise NotYet(
+            "an expansion about the minimum in several invariants",
+            remedy="use about = 0 or another number", place=_place(equations),
+        )
+    functions = tuple(
+        TaylorFunction(
+            name=f.name, degree_at=degree_table(f.declared, equations, orders),
+            constant=_constant_matters(equations, f),
+            derivative=f.declared.coefficients == "derivative",
+        )
+        for f in flows
+    )
+    about = None
+    if not moving:
+        value = float(abouts[0].subs(equations.truncation.parameters))  # type: ignore[union-attr]
+        about = (value,) * len(flows[0].coordinates)
+    return Taylor(
+        coordinates=flows[0].coordinates, functions=functions, about=about,
+        jets={f.name: f.jets for f in flows},
+    )
+
+
+def _constant_matters(equations: FlowEquations, flow: FunctionFlow) -> bool:
+    """False where the undifferentiated function occurs only as -const * U in its own flow: its constant term
+    then decouples and is dropped."""
+    plain = symbols.jet(flow.name, (0,) * len(flow.coordinates))
+    others = [f.rhs for f in equations.functions if f is not flow]
+    others += [loop.integrand for loop in equations.loops] + [c.rhs for c in equations.couplings]
+    if any(e.has(plain) for e in others):
+        return True
+    coefficient = flow.rhs.diff(plain)
+    names = {s.name for s in coefficient.free_symbols}
+    return any("{" in n for n in names) or bool(names & set(flow.coordinates))
+
+
+def _field_polynomial(equations: FlowEquations, orders: tuple[int, ...]) -> FieldPolynomial:
+    import sympy
+
+    potential = equations.potential
+    assert potential is not None
+    coordinates = [sympy.Symbol(name) for name in potential.coordinates]
+    parameters = equations.truncation.parameters
+    powers = tuple(2 if name.endswith("{2}") else 1 for name in potential.coordinates)
+    limit_at: dict[int, int] = {}
+    if equations.invariants is not None:
+        couplings, degree_of, expression, limit_at = _expanded_invariants(equations, orders)
+        terms = dict(sympy.Poly(sympy.expand(expression), *coordinates).terms())
+    else:
+        couplings, terms = potential.couplings, dict(potential.terms)
+        degree_of = (1,) * len(couplings)
+    terms = {e: c.subs(parameters) for e, c in terms.items() if any(e)}
+    exponents = tuple(sorted(terms, key=lambda e: (sum(a * p for a, p in zip(e, powers, strict=True)), e)))
+    matrix, field_degree = _coupling_matrix(exponents, terms, couplings, powers)
+    try:
+        pivots = choose_pivots(matrix, [])
+    except ValueError:
+        raise InputError(
+            "the couplings of the potential are not independent: two of them multiply the same operators",
+            remedy="remove one of them, or change the operators", place=_place(equations),
+        ) from None
+    return FieldPolynomial(
+        name=potential.name, coordinates=potential.coordinates, powers=powers, couplings=couplings,
+        degree_of=degree_of, field_degree=field_degree, limit_at=limit_at,
+        degree=max(sum(e) for e in exponents), exponents=exponents,
+        program=compile_expressions([terms[e] for e in exponents]), pivots=pivots, jets=potential.jets,
+    )
+
+
+def _expanded_invariants(
+    equations: FlowEquations, orders: tuple[int, ...]
+) -> tuple[tuple[str, ...], tuple[int, ...], sympy.Expr, dict[int, int]]:
+    import sympy
+
+    from frg.evaluate.series import monomials
+
+    expansion = equations.invariants
+    assert expansion is not None
+    function = expansion.function
+    limit_at = degree_table(function, equations, orders)
+    names, degrees, total = [], [], sympy.Integer(0)
+    for e in monomials(len(expansion.invariants), max(limit_at.values())):
+        if not any(e):
+            continue
+        name = function.name + "_".join(str(i) for i in e)
+        factor = math.prod(math.factorial(i) for i in e) if function.coefficients == "derivative" else 1
+        total += sympy.Symbol(name) / factor * sympy.Mul(
+            *(inv**i for inv, i in zip(expansion.invariants, e, strict=True))
+        )
+        names.append(name)
+        degrees.append(sum(e))
+    return tuple(names), tuple(degrees), total, limit_at
+
+
+def _coupling_matrix(
+    exponents: tuple[tuple[int, ...], ...], terms: dict[tuple[int, ...], sympy.Expr],
+    couplings: tuple[str, ...], powers: tuple[int, ...],
+) -> tuple[np.ndarray, tuple[int, ...]]:
+    """dc/dg at a generic point, and the lowest number of fields that each coupling multiplies."""
+    import sympy
+
+    generic = {sympy.Symbol(n): sympy.Rational(7 + 3 * i, 5 + 2 * i) for i, n in enumerate(couplings)}
+    matrix = np.array([
+        [float(terms[e].diff(sympy.Symbol(n)).subs(generic)) for n in couplings] for e in exponents
+    ])
+    degrees = [sum(a * p for a, p in zip(e, powers, strict=True)) for e in exponents]
+    lowest = tuple(
+        min((degrees[i] for i in range(len(exponents)) if matrix[i, j] != 0), default=2)
+        for j in range(len(couplings))
+    )
+    return matrix, lowest
+
+
+def _rule_subtracts(equations: FlowEquations) -> bool:
+    rule = loop_rule(equations)
+    return rule is not None and rule.subtract
+
+
+def loop_rule(equations: FlowEquations):  # type: ignore[no-untyped-def]
+    """The regulator's LoopRule for the loops that are left to be done numerically, or None."""
+    if not equations.loops:
+        return None
+    return equations.regulator.rule(
+        dimension_value(equations), derivatives=2, decay=min(loop.decay for loop in equations.loops)
+    )
+
+
+def dimension_value(equations: FlowEquations) -> float:
+    truncation = equations.truncation
+    return float(truncation.dimension.subs(truncation.parameters))
+
+
+def flow_arguments(flow: Flow, *, box: float = 1.0, scale: np.ndarray | None = None) -> Arguments:
+    """Numerical values of everything but the unknowns; `scale` defaults to the natural units."""
+    jnp = load().numpy
+    equations = flow.equations
+    d = dimension_value(equations)
+    parameters = {k: float(v) for k, v in equations.truncation.parameters.items()}
+    # v_d = 1/(2^(d+1) pi^(d/2) Gamma(d/2)), Berges, Tetradis, Wetterich, Phys. Rept. 363 (2002) 223
+    parameters["vd"] = 1 / (2 ** (d + 1) * math.pi ** (d / 2) * math.gamma(d / 2))
+    found = loop_rule(equations)
+    rule = None
+    if found is not None:
+        rule = Rule(
+            y=jnp.asarray(found.y), weight=jnp.asarray(found.weight), s=jnp.asarray(found.s),
+            surface_y=jnp.asarray(found.surface_y), surface_weight=jnp.asarray(found.surface_weight),
+            surface_s=jnp.asarray(found.surface_s),
+        )
+    args = Arguments(parameters=parameters, rule=rule, box=jnp.asarray(float(box)), scale=jnp.ones(flow.size))
+    if scale is None:
+        scale = natural_scale(flow, args)
+    return args._replace(scale=jnp.asarray(scale))
+
+
+def natural_units(flow: Flow, args: Arguments) -> tuple[float, float]:
+    """(size of the coordinates, size of the functions): the response of the flow at vanishing couplings to
+    a constant mass, summed over all modes, which is where the loops put the minimum of a potential."""
+    jax, jnp, _ = load()
+    equations = flow.equations
+    source = equations.potential or (equations.functions[0] if equations.functions else None)
+    if source is None:
+        return 1.0, 1.0
+    coordinates = source.coordinates
+    program = compile_expressions([source.rhs])
+    by_fields = equations.potential is not None
+    slots = [o for o in source.jets if sum(o) == (2 if by_fields else 1) and max(o) == sum(o)]
+
+    def respond(mass: Any) -> Any:
+        env = {s: jnp.zeros(()) for s in program.symbols | {x for p in flow._loops.values() for x in p[1].symbols}}
+        env |= args.parameters | {name: jnp.zeros(()) for name in coordinates}
+        env |= {symbols.jet(source.name, o).name: mass for o in slots}
+        return flow._with_loops(program, env, args.rule)[0]
+
+    response = abs(float(jax.jacfwd(respond)(jnp.zeros(()))))
+    unit = 4 * args.parameters["vd"] / dimension_value(equations)
+    size = max(response, unit) if math.isfinite(response) else unit
+    return size, size
+
+
+def natural_scale(flow: Flow, args: Arguments) -> np.ndarray:
+    """(size,) scale of every unknown from the natural units."""
+    coordinate, value = natural_units(flow, args)
+    own = flow.block.unit(coordinate, value) if flow.block is not None else np.zeros(0)
+    rest = [coordinate if name == "minimum{}" else 1.0 for name in flow.names[len(own):]]
+    return np.concatenate([own, rest])
+
+

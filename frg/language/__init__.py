@@ -1,0 +1,1 @@
+"""The safe mathematics parser, the truncation-file reader and `Truncation`."""

@@ -1,0 +1,1 @@
+"""Regulators: shapes s(y), their parameters and quadrature rules."""

@@ -1,0 +1,1 @@
+"""Tables, plots, LaTeX, HTML report: read records only."""

@@ -1,0 +1,1 @@
+"""Fixed points and spectra of a Flow."""

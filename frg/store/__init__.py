@@ -1,0 +1,1 @@
+"""Run files: in memory and HDF5."""

@@ -1,0 +1,1 @@
+"""Convergence studies: generators of records, tracking and the verdict."""
