@@ -26,6 +26,8 @@ def expression_text(expression: sympy.Expr) -> str:
     """The expression in the grammar of truncation files: x^2/2 + diff(U(rho), rho).
 
     Raises InputError for a node that the grammar has no word for."""
+    import sympy
+    from sympy.printing.precedence import precedence
     from sympy.printing.str import StrPrinter
 
     class Printer(StrPrinter):  # sympy's own printers are made to be subclassed; sympy is imported late
@@ -34,6 +36,26 @@ def expression_text(expression: sympy.Expr) -> str:
 
         def _print_Float(self, e: sympy.Float) -> str:
             return repr(float(e))
+
+        def _print_Mul(self, e: sympy.Expr) -> str:
+            level = precedence(sympy.Symbol("x") * sympy.Symbol("y"))
+            coefficient, factors = e.as_coeff_mul(rational=True)
+            ordered = sympy.Mul(*factors, evaluate=False).as_ordered_factors()
+            above, below = [], []
+            for f in ordered:
+                under = f.is_Pow and f.exp.is_Rational and f.exp < 0
+                shown = sympy.Pow(f.base, -f.exp) if under else f
+                (below if under else above).append((shown, self.parenthesize(shown, level)))
+            if abs(coefficient.p) != 1 or not above:
+                above.insert(0, (None, str(abs(coefficient.p))))
+            if coefficient.q != 1:
+                below.insert(0, (None, str(coefficient.q)))
+            text = ("-" if coefficient.p < 0 else "") + "*".join(t for _, t in above)
+            if len(below) == 2 and coefficient.q != 1 and below[1][0].is_Add:
+                # a number times one sum would be multiplied out when read
+                return f"{text}/{below[0][1]}/{below[1][1]}"
+            bottom = "*".join(t for _, t in below)
+            return text if not below else f"{text}/{bottom}" if len(below) == 1 else f"{text}/({bottom})"
 
         def _print_Derivative(self, e: sympy.Derivative) -> str:
             steps = [str(v) if k == 1 else f"{v}, {k}" for v, k in e.variable_count]
