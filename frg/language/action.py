@@ -13,7 +13,6 @@ from typing import TYPE_CHECKING, NoReturn
 
 from frg.errors import InputError, NotYet, Place
 from frg.language.algebra import Refused, substitute
-from frg.language.names import listing
 from frg.language.truncation import RunningFunction, Truncation
 
 if TYPE_CHECKING:
@@ -250,7 +249,7 @@ class _Check:
         fields = [str(operator.args[0]) for operator, _ in term.factors]
         if len(set(fields)) > 1:
             self.fail(
-                f"the kinetic term {term} mixes {listing(sorted(fields))}",
+                f"the kinetic term {term} mixes {' and '.join(sorted(fields))}",
                 "choose fields with a diagonal kinetic term d(a,mu)^2/2 + d(b,mu)^2/2",
                 text=str(term),
             )
