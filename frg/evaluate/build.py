@@ -277,10 +277,24 @@ def natural_units(flow: Flow, args: Arguments) -> tuple[float, float]:
     return size, size
 
 
+SERIES_REACH = 3.0  # potentials vary over a few natural units of the coordinate: the unit of a series' variable
+
+
+def stretched_scale(block: Taylor, scale: np.ndarray, factor: float) -> np.ndarray:
+    """Scale of the unknowns when the unit of the series' variable is stretched; a running minimum keeps its own."""
+    stretched = scale / factor ** np.array([float(block.algebra.degrees[k]) for _, k in block.layout])
+    if block.moving:
+        slot = block.layout.index((0, 1))
+        stretched[slot] = scale[slot]
+    return stretched
+
+
 def natural_scale(flow: Flow, args: Arguments) -> np.ndarray:
     """(size,) scale of every unknown from the natural units."""
     coordinate, value = natural_units(flow, args)
     own = flow.block.unit(coordinate, value) if flow.block is not None else np.zeros(0)
+    if isinstance(flow.block, Taylor):
+        own = stretched_scale(flow.block, own, SERIES_REACH)
     rest = [coordinate if name == "minimum{}" else 1.0 for name in flow.names[len(own):]]
     return np.concatenate([own, rest])
 

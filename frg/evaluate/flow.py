@@ -186,9 +186,8 @@ class Flow:
         jnp = load().numpy
         if not self.minimum_function:
             return args.scale
-        return args.scale.at[-1].set(args.scale[0] / args.scale[-1]) if hasattr(args.scale, "at") else (
-            jnp.asarray(args.scale).at[-1].set(args.scale[0] / args.scale[-1])
-        )
+        scale = jnp.asarray(args.scale)
+        return scale.at[-1].set(scale[0] / scale[-1])
 
     def system(self, c: Any, args: Arguments) -> tuple[Any, Any, Any]:
         """(b, db/dc, M) scaled, for all unknowns; select the active block outside."""
@@ -213,6 +212,13 @@ class Flow:
                     name = f"{function.name}{{{','.join(map(str, orders))}}}"
                     env[name] = self.block.jets_at(block_g, x, function.name, orders, args.box)
         return jnp.stack([jnp.asarray(v) for v in self._masses.run(env, series_arithmetic())])
+
+
+def masses_at_centre(flow: Flow, g: Any, args: Arguments) -> Any:
+    """(k,) the masses of `Flow.masses` at the point of expansion, for any number of coordinates."""
+    jnp = load().numpy
+    values = flow._masses.run(flow.environment(g, args), series_arithmetic())
+    return jnp.stack([v.coefficients[0] if isinstance(v, Series) else jnp.asarray(v) for v in values])
 
 
 def integrate(

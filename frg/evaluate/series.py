@@ -154,17 +154,30 @@ def _multiply(algebra: SeriesAlgebra, a: Any, b: Any) -> Any:
 
 @lru_cache(maxsize=64)
 def _inverse_function(algebra: SeriesAlgebra) -> Any:
-    """1/a by Newton doubling, exact once 2^steps > degree; with the derivative rule d(1/a) = -da/a^2."""
-    jax, jnp, _ = load()
-    steps = max(0, math.ceil(math.log2(algebra.degree + 1)))
+    """1/a by the recurrence  b_k = -(1/a_0) sum_(i > 0) a_i b_(k-i),  degree by degree, with the derivative
+    rule d(1/a) = -da/a^2.
+
+    Newton doubling would take fewer steps but loses digits in the second half of the last doubling, where it
+    subtracts the large truncation garbage of the step before."""
+    jax, jnp, lax = load()
+    degrees = algebra.degrees
+
+    def by_row(k: Any, state: Any) -> Any:
+        a, b = state
+        row = jnp.sum(_padded(b)[jnp.asarray(algebra.quotients)[k]] * a.at[0].set(0.0))
+        return a, b.at[k].set(-row / a[0])
+
+    def by_degree(k: Any, state: Any) -> Any:
+        a, b = state
+        rows = -_multiply(algebra, a.at[0].set(0.0), b) / a[0]
+        return a, jnp.where(degrees == k, rows, b)
 
     @jax.custom_jvp
     def inverse(a: Any) -> Any:
         b = jnp.zeros_like(a).at[0].set(1.0 / a[0])
-        for _ in range(steps):
-            error = -_multiply(algebra, a, b)
-            b = _multiply(algebra, b, error.at[0].add(2.0))
-        return b
+        if algebra.variables == 1:
+            return lax.fori_loop(1, algebra.length, by_row, (a, b))[1]
+        return lax.fori_loop(1, algebra.degree + 1, by_degree, (a, b))[1]
 
     @inverse.defjvp
     def inverse_jvp(primals: Any, tangents: Any) -> Any:

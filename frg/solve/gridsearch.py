@@ -1,0 +1,216 @@
+"""Search for global fixed points on a Chebyshev grid."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from functools import cached_property
+
+import numpy as np
+
+from frg.derive.equations import FlowEquations
+from frg.errors import NotYet, Place
+from frg.evaluate.build import flow_arguments, loop_rule, natural_units
+from frg.evaluate.jaxload import load
+from frg.records import FixedPoint
+from frg.solve.fixedpoint import Examiner, Measured, build_record
+from frg.solve.functional import GridProblem, GridSolution, agreeing
+from frg.solve.search import AbstractSearch, SearchSettings, Warm, lowest_of, ranked
+from frg.solve.shooting import Shooting, Shot, can_shoot, companion
+
+MORE_POINTS = 12  # of the second grid that cleans the spectrum
+WIDER_BOX = 1.25  # of the second grid, against the box of the first
+MOST_BRACKETS = 48  # of the shooting scan; more sign changes than this mean that the scan is not reliable
+
+
+@dataclass(frozen=True, kw_only=True, eq=False)
+class GridSearch(AbstractSearch):
+    """Shooting gives the candidates; every one is solved on the grid and again on a finer grid over a wider
+    box. What does not survive that is not a global fixed point."""
+
+    equations: FlowEquations
+    settings: SearchSettings
+
+    @cached_property
+    def problem(self) -> GridProblem:
+        if not can_shoot(self.equations):
+            raise NotYet(
+                "a grid for several functions, for couplings beside a function, or for flows with more than "
+                "two derivatives",
+                remedy="use an expansion about a number or about the minimum",
+                place=Place(source=self.equations.truncation.source),
+            )
+        return GridProblem(equations=self.equations, points=self._declared.points)
+
+    @property
+    def _declared(self):  # type: ignore[no-untyped-def]
+        return self.equations.functions[0].declared.grid
+
+    @cached_property
+    def second(self) -> GridProblem:
+        return GridProblem(equations=self.equations, points=self._declared.points + MORE_POINTS)
+
+    @cached_property
+    def lowest(self) -> float:
+        rule = loop_rule(self.equations)
+        return rule.lowest if rule else lowest_of(self.equations)
+
+    @cached_property
+    def examiner(self) -> Examiner:
+        return Examiner(flow=self.problem.flow, lowest=self.lowest)
+
+    @cached_property
+    def second_examiner(self) -> Examiner:
+        return Examiner(flow=self.second.flow, lowest=self.lowest)
+
+    def find(self, order: int | None, warm: Warm) -> tuple[list[FixedPoint], dict[str, int], tuple[str, ...]]:
+        counts = {"candidates": 0, "converged": 0, "lost in a wider box": 0}
+        notes: list[str] = []
+        kept: list[tuple[GridSolution, FixedPoint]] = []
+        for shot in self._candidates(notes):
+            counts["candidates"] += 1
+            self._try(shot, kept, counts)
+        if not any(record.kind == "physical" for _, record in kept):
+            notes.append("shooting found no interacting fixed point; simple potentials were tried as starts")
+            for shot in self._simple():
+                counts["candidates"] += 1
+                self._try(shot, kept, counts)
+        counts["fixed points"] = len(kept)
+        return ranked([record for _, record in kept]), counts, tuple(notes)
+
+    # ---- candidates --------------------------------------------------------------------------
+
+    def _candidates(self, notes: list[str]) -> list[Shot]:
+        shooting = Shooting(equations=companion(self.equations))
+        args = flow_arguments(shooting.flow)
+        shots, dropped = shooting.scan(self.settings.shooting, args, self.lowest, MOST_BRACKETS)
+        if dropped:
+            notes.append(f"{dropped} sign changes of the shooting scan were not followed")
+        return [self._constant(), *(s for s in shots if len(s.x) > 20)]
+
+    def _unit(self) -> float:
+        return natural_units(self.problem.flow, flow_arguments(self.problem.flow))[0]
+
+    def _constant(self) -> Shot:
+        """The Gaussian fixed point: a constant potential."""
+        x = np.linspace(0.1, 6.0, 60) * self._unit()
+        return Shot(sigma=0.0, x=x, u=np.zeros(60), slope=np.zeros(60))
+
+    def _simple(self) -> list[Shot]:
+        """Quartic potentials with a few minima and curvatures, in natural units."""
+        unit = self._unit()
+        x = np.linspace(0.02, 6.0, 300) * unit
+        return [
+            Shot(sigma=-curve * minimum, x=x, u=curve / unit * (x - minimum * unit) ** 2 / 2,
+                 slope=curve / unit * (x - minimum * unit))
+            for minimum in (0.0, 0.25, 0.5, 1.0, 2.0) for curve in (0.03, 0.1, 0.3, 1.0)
+        ]
+
+    # ---- one candidate ------------------------------------------------------------------------
+
+    def _try(
+        self, shot: Shot, kept: list[tuple[GridSolution, FixedPoint]], counts: dict[str, int]
+    ) -> None:
+        start, args = self.problem.start(shot, self._declared.upto)
+        solution = self.problem.solve(start, args, self.settings.grid)
+        if solution is None:
+            return
+        counts["converged"] += 1
+        if any(self._same(solution, other) for other, _ in kept):
+            return
+        box = WIDER_BOX * float(args.box)
+        again = self.second.solve(*self.second.transfer(solution, box), self.settings.grid)
+        if again is None or not self._same(solution, again):
+            counts["lost in a wider box"] += 1
+            return
+        kept.append((solution, self._record(solution, again)))
+
+    def _slopes(self, solution: GridSolution) -> np.ndarray:
+        """u' at a few points inside the smaller box: what tells solutions apart."""
+        box = float(solution.args.box)
+        g = solution.unknowns * np.asarray(solution.args.scale)
+        block, name = solution.flow.block, self.equations.functions[0].name
+        x = load().numpy.asarray(np.array([0.0, 0.15, 0.3, 0.45]) * self._reference_box(solution))
+        return np.asarray([block.jets_at(g[: block.size], one, name, (1,), box) for one in x])  # type: ignore[union-attr]
+
+    def _reference_box(self, solution: GridSolution) -> float:
+        return self._unit()
+
+    def _same(self, a: GridSolution, b: GridSolution) -> bool:
+        first, second = self._slopes(a), self._slopes(b)
+        size = max(np.max(np.abs(first)), np.max(np.abs(second)))
+        return bool(np.max(np.abs(first - second)) < 1e-4 * size + 1e-9)
+
+    def _measure(self, examiner: Examiner, solution: GridSolution) -> Measured:
+        g = solution.unknowns * np.asarray(solution.args.scale)
+        active = np.ones(len(g), dtype=bool)
+        return examiner.measure(g, active, solution.args, self.settings.polish)
+
+    def _record(self, solution: GridSolution, again: GridSolution) -> FixedPoint:
+        judgement = self.settings.judgement
+        measured = self._measure(self.examiner, solution)
+        other = self._measure(self.second_examiner, again)
+        tolerance = self.settings.grid_agreement
+        theta, second = measured.spectrum.theta, other.spectrum.theta
+        keep = agreeing(theta, second, tolerance) & ~self._constant_direction(measured)
+        keep &= theta.real < dimension(self.equations) + 1e-6
+        keep = _leading(keep, theta, dimension(self.equations))
+        odd = self.examiner.odd_exponents(measured.g, None, solution.args, self._unit())
+        odd_again = self.second_examiner.odd_exponents(other.g, None, again.args, self._unit())
+        odd = odd[agreeing(odd, odd_again, tolerance)]
+        error = np.array([np.min(np.abs(second - t)) for t in theta[keep]])
+        notes = [f"box and resolution error of theta, by direction: {', '.join(f'{e:.1e}' for e in error[:6])}"]
+        notes += self._landmarks(solution, measured)
+        return build_record(
+            self.examiner, measured, judgement, solution.args, label="", order=None, keep=keep, odd=odd,
+            notes=tuple(notes),
+        )
+
+    def _constant_direction(self, measured: Measured) -> np.ndarray:
+        """(k,) True for the eigenvector that only shifts the potential by a constant (theta = d)."""
+        vectors = np.abs(measured.spectrum.right / np.linalg.norm(measured.spectrum.right, axis=0))
+        return vectors[0] > 1 - 1e-6
+
+    def _landmarks(self, solution: GridSolution, measured: Measured) -> list[str]:
+        block, args, name = solution.flow.block, solution.args, self.equations.functions[0].name
+        own = measured.g[: block.size]  # type: ignore[union-attr]
+        at_zero = float(block.jets_at(own, load().numpy.zeros(()), name, (1,), args.box))  # type: ignore[union-attr]
+        found = [f"box [0, {float(args.box):.6g}]", f"slope at zero {at_zero:.15g}"]
+        minimum = refined_minimum(solution, measured.g, name)
+        if minimum is not None:
+            found.append(f"outermost minimum at {minimum:.15g}")
+        return found
+
+
+def refined_minimum(solution: GridSolution, g: np.ndarray, name: str) -> float | None:
+    """Position of the outermost minimum of the potential on a grid, or None."""
+    from scipy.optimize import brentq
+
+    block, args = solution.flow.block, solution.args
+    own = g[: block.size]  # type: ignore[union-attr]
+
+    def slope(x: float) -> float:
+        return float(block.jets_at(own, load().numpy.asarray(x), name, (1,), args.box))  # type: ignore[union-attr]
+
+    x = np.linspace(0.0, float(args.box), 121)
+    values = np.array([slope(v) for v in x])
+    turns = np.flatnonzero((values[:-1] < 0) & (values[1:] >= 0))
+    return float(brentq(slope, x[turns[-1]], x[turns[-1] + 1], xtol=1e-15)) if len(turns) else None
+
+
+def dimension(equations: FlowEquations) -> float:
+    return float(equations.truncation.dimension.subs(equations.truncation.parameters))
+
+
+def _leading(keep: np.ndarray, theta: np.ndarray, d: float) -> np.ndarray:
+    """Keep directions only as far down as the two grids agree without a gap, artefacts above d aside."""
+    found = keep.copy()
+    broken = False
+    for i, value in enumerate(theta):
+        if value.real > d - 1e-6:
+            continue
+        if not keep[i]:
+            broken = True
+        found[i] = keep[i] and not broken
+    return found
+
+

@@ -1,0 +1,28 @@
+"""Canonical (Gaussian) exponents of the operators a truncation keeps at an order."""
+
+from __future__ import annotations
+
+import numpy as np
+
+from frg.derive.equations import FlowEquations
+from frg.evaluate.fieldpolynomial import FieldPolynomial
+from frg.evaluate.flow import Flow
+from frg.evaluate.taylor import Taylor
+
+
+def canonical_exponents(equations: FlowEquations, flow: Flow, order: int | None) -> np.ndarray | None:
+    """theta = d - f (d - 2)/2 of the couplings of operators with f fields, falling; None for typed-in flows and
+    grids, whose operators are not known one by one."""
+    truncation = equations.truncation
+    if truncation.lagrangian is None:
+        return None
+    d = float(truncation.dimension.subs(truncation.parameters))
+    block = flow.block
+    if isinstance(block, Taylor):
+        fields = np.array([2.0 * block.algebra.degrees[k] for _, k in block.layout])
+    elif isinstance(block, FieldPolynomial):
+        fields = np.array(block.field_degree, dtype=float)
+    else:
+        return None
+    active = block.active(order)
+    return np.sort(d - fields[active] * (d - 2) / 2)[::-1]

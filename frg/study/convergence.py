@@ -1,0 +1,76 @@
+"""The convergence study: a generator of steps over the orders of a truncation, then tracks and a verdict."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import dataclass
+
+from frg.derive.equations import FlowEquations
+from frg.errors import InputError, Place
+from frg.records import Step, Track, Verdict
+from frg.solve.search import AbstractSearch, PolynomialSearch, SearchSettings, Warm, make_search, run_step
+from frg.study.canonical import canonical_exponents
+from frg.study.tracking import TrackingSettings, track_points
+from frg.study.verdict import VerdictSettings, judge
+
+
+@dataclass(frozen=True, kw_only=True)
+class StudySettings:
+    """All choices of a study beyond the truncation and the regulator."""
+
+    search: SearchSettings
+    tracking: TrackingSettings
+    verdict: VerdictSettings
+
+
+@dataclass(frozen=True, kw_only=True, eq=False)
+class ConvergenceStudy:
+    """One truncation at several orders. One compilation serves all of them."""
+
+    equations: FlowEquations
+    orders: tuple[int, ...]
+    settings: StudySettings
+    search: AbstractSearch
+
+    def steps(self, done: tuple[Step, ...] = ()) -> Iterator[Step]:
+        """Steps after those already `done` (the first orders, from an interrupted run). The result does not
+        depend on whether the study was interrupted: a step sees only its order and the step before."""
+        name = self.equations.truncation.study.order
+        previous = done[-1] if done else None
+        for order in self.orders[len(done):]:
+            warm = Warm(points=tuple(
+                dict(zip(p.names, (float(c) for c in p.couplings), strict=True))
+                for p in (previous.fixed_points if previous else ())
+            ))
+            previous = run_step(self.search, name, order, warm)
+            yield previous
+
+    def conclude(self, steps: tuple[Step, ...]) -> tuple[tuple[Track, ...], Verdict]:
+        """Tracks and the verdict from all steps."""
+        tracks = track_points(steps, self.settings.tracking)
+        canonical = [None for _ in steps]
+        if isinstance(self.search, PolynomialSearch):
+            canonical = [  # type: ignore[assignment]
+                canonical_exponents(self.equations, self.search.flow, order) for order in self.orders[: len(steps)]
+            ]
+        return tracks, judge(steps, tracks, canonical, self.settings.verdict)  # type: ignore[arg-type]
+
+
+def convergence_study(
+    equations: FlowEquations, orders: tuple[int, ...], settings: StudySettings
+) -> ConvergenceStudy:
+    """A study over `orders`, rising. Raises InputError for a truncation without an order axis."""
+    truncation = equations.truncation
+    if not orders:
+        raise InputError(
+            "this truncation has no order axis to study",
+            remedy="give a running function an order in the order symbol and [study] values, or use `frg solve`",
+            place=Place(source=truncation.source),
+        )
+    if list(orders) != sorted(set(orders)):
+        raise InputError(
+            f"orders must rise without repetition, not {', '.join(map(str, orders))}",
+            remedy='write them as "2..12" or in rising order', place=Place(source=truncation.source),
+        )
+    search = make_search(equations, orders, settings.search)
+    return ConvergenceStudy(equations=equations, orders=orders, settings=settings, search=search)
