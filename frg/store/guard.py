@@ -17,7 +17,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from frg.errors import FrgError, Place, StoreError
-from frg.store import files
+from frg.store import files, vetting
 from frg.store.layout import FORMAT, FORMAT_VERSION
 
 if TYPE_CHECKING:
@@ -42,7 +42,8 @@ def opened(path: str | os.PathLike[str], *, sealed: bool = False, whole: bool = 
     """The run file, opened for reading in memory after all checks; `whole=False` checks the root only.
 
     A file whose seal does not match is refused. One without a seal (written or changed by another program) is
-    refused if `sealed` is set. Whatever goes wrong in the body while reading, too, raises StoreError."""
+    refused if `sealed` is set, and read by a child process first otherwise. Whatever goes wrong in the body
+    while reading, too, raises StoreError."""
     data, state = files.unseal(files.read_bytes(path))
     place = Place(source=str(path))
     if state is False:
@@ -51,27 +52,29 @@ def opened(path: str | os.PathLike[str], *, sealed: bool = False, whole: bool = 
             remedy="restore it from a copy, or repeat the run",
             place=place,
         )
+    if state is None:
+        with translated(path):
+            _check_end(data)
+        if sealed:
+            raise StoreError(
+                "the run file was changed by another program: its checksum is gone",
+                remedy="repeat the run, or look at the file with `frg show` and `frg check`",
+                place=place,
+            )
+        vetting.vet(data, path)
+    with open_checked(data, path, whole=whole) as file:
+        yield file
+
+
+@contextlib.contextmanager
+def open_checked(data: bytes, path: str | os.PathLike[str], *, whole: bool) -> Iterator[h5py.File]:
+    """The content of a run file, opened in memory after all checks but that of the seal."""
     with translated(path):
         import h5py
 
-        identifier = h5py.h5f.open_file_image(data)
-        file = h5py.File(identifier)
-        with contextlib.closing(file):
-            _check_version(file)
-            if sealed and state is None:
-                raise StoreError(
-                    "the run file was changed by another program: its checksum is gone",
-                    remedy="repeat the run, or read the file with `frg show` and `frg check`",
-                    place=place,
-                )
-            # Bytes beyond the recorded end, other than a seal, are the rest of a cut seal or foreign data.
-            if state is None and len(data) != _recorded_end(data):
-                raise StoreError(
-                    "the run file is damaged: its end is missing",
-                    remedy="restore it from a copy, or repeat the run",
-                    place=place,
-                )
+        with contextlib.closing(h5py.File(h5py.h5f.open_file_image(data))) as file:
             _check_attributes(file)
+            _check_version(file)
             if whole:
                 _Walk().group(file, 0)
             yield file
@@ -167,7 +170,6 @@ def _attribute(holder: h5py.Group, name: str) -> object:
 
 
 def _check_version(file: h5py.File) -> None:
-    _check_attributes(file)
     if "format" not in file.attrs or text(file, "format") != FORMAT:
         raise StoreError(
             f'this HDF5 file is no run file: its attribute format is not "{FORMAT}"', remedy="name a run file"
@@ -182,12 +184,16 @@ def _check_version(file: h5py.File) -> None:
         raise _bad(f"format version {version} does not exist")
 
 
-def _recorded_end(data: bytes) -> int:
-    """The end of the file as the superblock records it (HDF5 file format specification, section II.A)."""
-    offset = {0: 40, 1: 44, 2: 28, 3: 28}.get(data[8])
+def _check_end(data: bytes) -> None:
+    """Refuse content that does not end where the superblock says (HDF5 file format specification, II.A): the
+    file was cut, or what follows is the rest of a seal."""
+    offset = {0: 40, 1: 44, 2: 28, 3: 28}.get(data[8] if len(data) > 8 else -1)
     if offset is None:
-        raise _bad(f"superblock version {data[8]} is unknown")
-    return int.from_bytes(data[offset : offset + 8], "little")
+        raise _bad("its HDF5 superblock is unknown")
+    if len(data) != int.from_bytes(data[offset : offset + 8], "little"):
+        raise StoreError(
+            "the run file is damaged: its end is missing", remedy="restore it from a copy, or repeat the run"
+        )
 
 
 class _Walk:

@@ -215,6 +215,8 @@ def _absolute(path: str | os.PathLike[str]) -> Path:
     """The real path of the file: a rename must replace the run, not a symbolic link to it. A link that does
     not lead to a file is left as it is, and refused later on."""
     try:
+        if "\0" in os.fspath(path):
+            raise ValueError("it contains a NUL character")
         given = Path(os.path.abspath(path))
         return given.resolve(strict=True) if given.exists() else given.parent.resolve() / given.name
     except (OSError, ValueError, RuntimeError) as error:

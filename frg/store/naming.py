@@ -73,7 +73,7 @@ def list_runs(folder: str | os.PathLike[str]) -> list[RunSummary]:
 def summary(path: Path) -> RunSummary:
     """The summary of one file; never raises for what is in the file."""
     try:
-        with guard.opened(path, whole=False) as file:
+        with guard.opened(path, sealed=True, whole=False) as file:
             found = RunSummary(
                 path=path,
                 status=guard.text(file, "status"),
