@@ -13,11 +13,13 @@ from frg.study.tracking import TrackingSettings
 from frg.study.verdict import VerdictSettings
 
 
-def search_settings(*, thorough: bool) -> SearchSettings:
-    """Settings of `solve` and `converge`; `thorough` (--all) tries more starts and finer scans."""
+def search_settings(*, thorough: bool, single: bool = False) -> SearchSettings:
+    """Settings of `converge`, and with `single` of `solve`, whose one order can afford more starts;
+    `thorough` (--all) tries more starts and finer scans."""
     return SearchSettings(
-        starts=128 if thorough else 32,
-        rounds=4 if thorough else 2,
+        starts=128 if thorough or single else 32,
+        rounds=8 if thorough else (3 if single else 2),
+        later_rounds=4 if thorough else 1,
         seed=20240917,
         duplicate=1e-6,
         polish=4,

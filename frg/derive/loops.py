@@ -85,6 +85,8 @@ def _flat_integral(integrand: sympy.Expr, d: sympy.Expr) -> sympy.Expr:
 
     y, s0, s1, s2 = symbols.momentum(), symbols.shape(0), symbols.shape(1), symbols.shape(2)
     inside = integrand.subs(s2, 0).subs({s0: 1 - y, s1: -1})
+    # the masses sit in a factor without y, which stays as the user wrote it
+    constant, inside = inside.as_independent(y, as_Add=False)
     value = sympy.Integer(0)
     for power in range(_HIGHEST_POWER + 1):
         value += inside.subs(y, 0) / (sympy.factorial(power) * (d / 2 + power))
@@ -93,6 +95,7 @@ def _flat_integral(integrand: sympy.Expr, d: sympy.Expr) -> sympy.Expr:
             break
     else:
         raise FrgError("a flat-shape integrand did not reduce to a polynomial in y")
+    value = constant * sympy.factor(value)
     if integrand.has(s2):
         value += sympy.diff(integrand, s2).subs({s0: 0, s1: -sympy.Rational(1, 2), y: 1})
     return value

@@ -7,6 +7,7 @@ from collections.abc import Callable
 from typing import TYPE_CHECKING
 
 from frg.derive.equations import FlowEquations
+from frg.derive.flat.lagrangian import HALF_SQUARE
 
 if TYPE_CHECKING:
     import sympy
@@ -103,6 +104,8 @@ def _split(name: str) -> tuple[str, list[int]] | None:
 
 
 def _plain(name: str) -> str:
+    if name.endswith(HALF_SQUARE):
+        return f"({name.removesuffix(HALF_SQUARE)}^2/2)"
     special = {"y{}": "y", "h{}": "h", "V{}": "V", "vd": "v_d", "P{}": "P"}
     if name in special:
         return special[name]
@@ -123,6 +126,8 @@ def _plain(name: str) -> str:
 
 
 def _latex_name(name: str) -> str:
+    if name.endswith(HALF_SQUARE):
+        return rf"\tfrac{{{_latex_plain(name.removesuffix(HALF_SQUARE))}^2}}{{2}}"
     special = {"y{}": "y", "h{}": "h", "V{}": "V", "vd": "v_d", "P{}": "P"}
     if name in special:
         return special[name]

@@ -9,6 +9,7 @@ import numpy as np
 
 from frg.derive import symbols
 from frg.derive.equations import FlowEquations, FunctionFlow
+from frg.derive.flat.lagrangian import HALF_SQUARE
 from frg.errors import InputError, NotYet, Place
 from frg.evaluate.discretisation import AbstractDiscretisation
 from frg.evaluate.fieldpolynomial import FieldPolynomial, choose_pivots
@@ -141,7 +142,7 @@ def _field_polynomial(equations: FlowEquations, orders: tuple[int, ...]) -> Fiel
     assert potential is not None
     coordinates = [sympy.Symbol(name) for name in potential.coordinates]
     parameters = equations.truncation.parameters
-    powers = tuple(2 if name.endswith("{2}") else 1 for name in potential.coordinates)
+    powers = tuple(2 if name.endswith(HALF_SQUARE) else 1 for name in potential.coordinates)
     limit_at: dict[int, int] = {}
     if equations.invariants is not None:
         couplings, degree_of, expression, limit_at = _expanded_invariants(equations, orders)
@@ -263,7 +264,8 @@ def natural_units(flow: Flow, args: Arguments) -> tuple[float, float]:
     coordinates = source.coordinates
     program = compile_expressions([source.rhs])
     by_fields = equations.potential is not None
-    slots = [o for o in source.jets if sum(o) == (2 if by_fields else 1) and max(o) == sum(o)]
+    powers = [1 if by_fields and not c.endswith(HALF_SQUARE) else 2 for c in coordinates]
+    slots = [o for o in source.jets if sum(k * p for k, p in zip(o, powers, strict=True)) == 2 and max(o) == sum(o)]
 
     def respond(mass: Any) -> Any:
         env = {s: jnp.zeros(()) for s in program.symbols | {x for p in flow._loops.values() for x in p[1].symbols}}

@@ -123,7 +123,7 @@ class Examiner:
         degrees = np.array([block.algebra.degrees[k] for _, k in block.layout], dtype=float)
         c = np.abs(g[: block.size] / scale[: block.size])
         use = (degrees >= 2) & (c > 0) & np.isfinite(c)
-        if use.sum() < 3:
+        if len(np.unique(degrees[use])) < 3:
             return scale
         rate = np.polyfit(degrees[use], np.log(c[use]), 1)[0]
         stretched = scale.copy()

@@ -36,6 +36,7 @@ class SearchSettings:
 
     starts: int
     rounds: int
+    later_rounds: int
     seed: int
     duplicate: float
     polish: int
@@ -179,7 +180,7 @@ class PolynomialSearch(AbstractSearch):
         if not self._moving:
             roots = np.zeros((1, self.flow.size)) if self._vanishes(active) else roots
         # a study needs few fresh starts once it has the roots of the previous order
-        rounds = 1 if len(warm_starts) else settings.rounds
+        rounds = settings.later_rounds if len(warm_starts) else settings.rounds
         for turn in range(rounds):
             cold = self._random(rng, settings.starts, active)
             batch = np.concatenate([warm_starts, cold]) if turn == 0 else cold
@@ -271,13 +272,42 @@ def ranked(records: list[FixedPoint]) -> list[FixedPoint]:
     labelled A, B, C, ... in that order."""
     import dataclasses
 
+    records = [dataclasses.replace(p, notes=(*p.notes, *_degeneracies(p))) for p in records]
+
     def key(point: FixedPoint) -> tuple[float, ...]:
         lead = float(point.theta[0].real) if len(point.theta) else 0.0
         return (KINDS.index(point.kind), point.relevant, lead, float(np.sum(np.abs(point.couplings[:1]))))
 
-    return [
+    labelled = [
         dataclasses.replace(point, label=letters(i)) for i, point in enumerate(sorted(records, key=key))
     ]
+    return [dataclasses.replace(p, notes=(*p.notes, *_twins(p, labelled[:i]))) for i, p in enumerate(labelled)]
+
+
+def _degeneracies(point: FixedPoint) -> tuple[str, ...]:
+    """A note naming real exponents that occur more than once."""
+    left = [float(t.real) for t in point.theta if abs(t.imag) < 1e-9]
+    found = []
+    while left:
+        value = left.pop(0)
+        same = [v for v in left if abs(v - value) < DEGENERATE * max(1.0, abs(value))]
+        left = [v for v in left if v not in same]
+        if same:
+            found.append(f"{value:.6g} ({len(same) + 1} times)")
+    return (f"degenerate exponents: {', '.join(found)}",) if found else ()
+
+
+def _twins(point: FixedPoint, earlier: list[FixedPoint]) -> tuple[str, ...]:
+    """A note naming earlier fixed points with the same exponents: images under a symmetry of the couplings."""
+    for other in earlier:
+        if len(other.theta) == len(point.theta) and np.allclose(
+            other.theta, point.theta, rtol=DEGENERATE, atol=DEGENERATE
+        ):
+            return (f"same exponents as {other.label}: an image of it under a symmetry of the couplings",)
+    return ()
+
+
+DEGENERATE = 1e-7
 
 
 def letters(index: int) -> str:

@@ -139,22 +139,27 @@ def _radial_coordinates(
 def _field_coordinates(
     truncation: Truncation, expressions: list[sympy.Expr]
 ) -> tuple[tuple[Coordinate, ...], list[sympy.Expr]]:
-    """Single fields are their own coordinates; a multiplet phi enters through phi^2/2, because its
-    Goldstone modes need (1/phi) dV/dphi to be a polynomial."""
+    """A multiplet phi enters through phi^2/2, because its Goldstone modes need (1/phi) dV/dphi to be a
+    polynomial; so does a single field that occurs in even powers only (far fewer monomials). Other single
+    fields are their own coordinates."""
     import sympy
 
     coordinates, rewritten = [], list(expressions)
     for field in truncation.fields:
         phi = sympy.Symbol(field.name)
-        if field.components == 1:
+        odd = any(p % 2 for e in rewritten for (p,) in sympy.Poly(e, phi).monoms())
+        if field.components == 1 and odd:
             coordinates.append(Coordinate(name=field.name, field=field, power=1, scale=sympy.Integer(1)))
             continue
-        name = f"{field.name}{{2}}"
+        name = f"{field.name}{HALF_SQUARE}"
         half = sympy.Rational(1, 2)
         coordinates.append(Coordinate(name=name, field=field, power=2, scale=half))
         square = sympy.Symbol(name)
         rewritten = [sympy.expand(_even(e, phi, 2 * square)) for e in rewritten]
     return tuple(coordinates), rewritten
+
+
+HALF_SQUARE = "{^2/2}"  # ending of the name of the coordinate phi^2/2 of a field phi
 
 
 def _even(e: sympy.Expr, phi: sympy.Symbol, square: sympy.Expr) -> sympy.Expr:
