@@ -19,9 +19,17 @@ LARGEST_GAMMA_ARGUMENT = 170
 LARGEST_DECIMAL_EXPONENT = 300
 NUMBER_BITS = 2048  # of one exact number
 TOTAL_BITS = 16384  # of all exact numbers met in one expression together
+LARGEST_ROOT = 10_000
+TAME_NODES = 80
+TAME_HEIGHT = 3
+TAME_EXPONENT = 16
 ROOT_BITS = 256  # of a number under a root: sympy tries to factor it
 
 _TOO_LARGE = "keep numbers below 1e300 in size and exponents below 1000"
+
+
+# What sympy raises where it loses itself in an expression that no one would write on purpose.
+GIVING_UP = (ArithmeticError, AttributeError, NotImplementedError, RecursionError, TypeError, ValueError)
 
 
 class Refused(Exception):
@@ -38,6 +46,7 @@ class SafeAlgebra:
 
     def __init__(self) -> None:
         self._bits_left = TOTAL_BITS
+        self._root = 1  # common multiple of the denominators in exponents of numbers
 
     def number(self, text: str) -> sympy.Rational:
         """An unsigned decimal literal as an exact rational."""
@@ -85,6 +94,12 @@ class SafeAlgebra:
                     "the number under the root has too many digits", "use a number with fewer digits"
                 )
             self._spend(bits * math.ceil(abs(value)))
+        self._count_root(base, exponent)
+        if not (exponent.is_Integer or (_tame(base) and _tame(exponent))):
+            raise Refused(
+                "powers and functions are nested too deeply around a power that is no whole number",
+                "simplify the expression",
+            )
         return _finite(sympy.Pow(base, exponent))
 
     def call(self, name: str, argument: sympy.Expr) -> sympy.Expr:
@@ -111,6 +126,21 @@ class SafeAlgebra:
         if largest > LARGEST_EXPONENT:
             raise Refused(f"the exponent is larger than {LARGEST_EXPONENT}", _TOO_LARGE)
         self._spend(_all_bits(argument) * math.ceil(largest))
+        self._count_root(argument, argument)
+
+    def _count_root(self, base: sympy.Expr, exponent: sympy.Expr) -> None:
+        """Refuse roots like 12^(1/99991): sympy works with integers as large as 12^99991 there.
+
+        Exponents of a number multiply in (b^e)^f and add in b^e*b^f, so their denominators are counted
+        together over the whole expression."""
+        denominator = _denominator(exponent)
+        if denominator > 1 and _all_bits(base):
+            self._root = math.lcm(self._root, denominator * _denominator(base))
+            if self._root > LARGEST_ROOT:
+                raise Refused(
+                    "the roots of numbers in this expression are too high",
+                    "use exponents with small denominators",
+                )
 
     def _spend(self, bits: int) -> None:
         self._bits_left -= bits
@@ -122,7 +152,10 @@ def substitute(expression: sympy.Expr, values: Mapping[str, sympy.Expr]) -> symp
     """Put `values` in for symbols by name, rebuilding the tree with bounded steps.
 
     Arguments of running functions are treated too; a derivative keeps its variables. Raises `Refused`."""
-    return _substitute(expression, values, SafeAlgebra())
+    try:
+        return _substitute(expression, values, SafeAlgebra())
+    except GIVING_UP:
+        raise Refused("the expression is too complicated", "simplify its numbers and powers") from None
 
 
 def _substitute(e: sympy.Expr, values: Mapping[str, sympy.Expr], algebra: SafeAlgebra) -> sympy.Expr:
@@ -156,10 +189,9 @@ def check_result(expression: sympy.Expr) -> None:
             raise Refused(
                 "the expression is not a real finite number", "check for roots of negative numbers and poles"
             )
-        if node.is_Rational and node != 0:
-            bits = node.p.bit_length() - node.q.bit_length()
-            if abs(bits) > 1000 or _bits_of(node) > NUMBER_BITS * 2:
-                raise Refused("a number in the expression is too large or too small", _TOO_LARGE)
+        # numerator and denominator of what is printed must be readable as literals
+        if node.is_Rational and max(abs(int(node.p)), int(node.q)) >= 10**LARGEST_DECIMAL_EXPONENT:
+            raise Refused("a number in the expression has too many digits", _TOO_LARGE)
         if node.is_Pow and largest_number(node.exp) > LARGEST_EXPONENT:
             raise Refused(f"the exponent is larger than {LARGEST_EXPONENT}", _TOO_LARGE)
 
@@ -252,6 +284,24 @@ def _float_call(name: str, x: float) -> float:
         raise Refused(f"{name}({x:g}) is too large for a double", _TOO_LARGE) from None
 
 
+def _tame(e: sympy.Expr) -> bool:
+    """Small, with small powers, hardly nested. sympy looks for the real and imaginary parts of the base of a
+    fractional power, which would take it for ever otherwise."""
+    return _nodes(e) <= TAME_NODES and _height(e) <= TAME_HEIGHT
+
+
+def _nodes(e: sympy.Expr) -> int:
+    return 1 + sum(_nodes(a) for a in e.args)
+
+
+def _height(e: sympy.Expr) -> int:
+    """How deep powers and functions are nested; a high whole power counts as too deep."""
+    if e.is_Pow and e.exp.is_Integer and abs(e.exp) > TAME_EXPONENT:
+        return TAME_HEIGHT + 1
+    inner = max((_height(a) for a in e.args), default=0)
+    return inner + bool(e.is_Pow or e.is_Function)
+
+
 def _finite(e: sympy.Expr) -> sympy.Expr:
     import sympy
 
@@ -273,6 +323,10 @@ def largest_number(e: sympy.Expr, *, outside_logs: bool = False) -> float:
 def _bits_of(number: sympy.Expr) -> int:
     p, q = abs(int(number.p)), int(number.q)
     return (p.bit_length() if p > 1 else 0) + (q.bit_length() if q > 1 else 0)
+
+
+def _denominator(e: sympy.Expr) -> int:
+    return int(e.q) if e.is_Rational else math.lcm(*(_denominator(a) for a in e.args))
 
 
 def _all_bits(e: sympy.Expr) -> int:

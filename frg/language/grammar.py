@@ -13,9 +13,10 @@ from collections.abc import Callable, Iterable
 from typing import TYPE_CHECKING, TypeVar
 
 from frg.errors import InputError, Place
-from frg.language.algebra import Refused, SafeAlgebra, check_result
+from frg.language.algebra import GIVING_UP, Refused, SafeAlgebra, check_result
 from frg.language.names import ELEMENTARY, NameTable, is_name, listing, suggestion
 from frg.language.tokens import Token, place_of, tokenize
+from frg.language.wording import expression_text
 
 if TYPE_CHECKING:
     import sympy
@@ -24,6 +25,7 @@ T = TypeVar("T")
 
 DEEPEST = 40
 HIGHEST_DERIVATIVE = 20
+SETTLING = 5
 
 
 def parse(text: str, *, names: NameTable, place: Place) -> sympy.Expr:
@@ -32,7 +34,15 @@ def parse(text: str, *, names: NameTable, place: Place) -> sympy.Expr:
     `place` is that of the first character of the text. Raises InputError, with the column and the
     offending part, for anything outside the grammar, unknown names, undefined values and expressions
     beyond the bounds on length, depth, exponents and digits."""
-    return _Parser(text, names, place).whole()
+    parser = _Parser(text, names, place)
+    expression = parser.whole()
+    for _ in range(SETTLING):
+        # sympy does not always reach its own normal form at once; what is read must print and read back equal
+        again = parser.again(expression)
+        if again == expression:
+            return again
+        expression = again
+    raise parser.error("the expression has no settled form", "simplify its numbers and powers", 0, len(text))
 
 
 def parse_custom_shape(text: str, parameters: Iterable[str], *, place: Place | None = None) -> sympy.Expr:
@@ -83,8 +93,11 @@ class _Parser:
         try:
             return step(*args)
         except Refused as refusal:
-            stop = self.tokens[self.index - 1].stop if self.index else len(self.text)
-            raise self.error(refusal.message, refusal.remedy, start, stop) from None
+            message, remedy = refusal.message, refusal.remedy
+        except GIVING_UP:
+            message, remedy = "the expression is too complicated", "simplify its numbers and powers"
+        stop = self.tokens[self.index - 1].stop if self.index else len(self.text)
+        raise self.error(message, remedy, start, stop)
 
     # -- the grammar ------------------------------------------------------------------------
 
@@ -96,6 +109,14 @@ class _Parser:
             raise self.unexpected(after_operand=True)
         self.guarded(0, check_result, expression)
         return expression
+
+    def again(self, expression: sympy.Expr) -> sympy.Expr:
+        """The expression printed and read once more."""
+        try:
+            return _Parser(expression_text(expression), self.names, Place()).whole()
+        except InputError as error:
+            whole = len(self.text)
+            raise self.error(f"multiplied out, {error.message}", error.remedy, 0, whole) from None
 
     def sum(self) -> sympy.Expr:
         start = self.token.start

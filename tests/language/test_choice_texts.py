@@ -4,10 +4,9 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from frg.errors import InputError
+from frg.errors import InputError, Place
 from frg.language.truncation import RegulatorChoice
 from frg.language.values import number_from_text, orders_from_text, regulator_choice_from_text
-from frg.errors import Place
 
 
 @pytest.mark.parametrize(
@@ -29,7 +28,9 @@ def test_orders(text, orders):
 
 @given(st.integers(0, 200), st.integers(0, 200), st.integers(1, 30))
 def test_orders_are_a_range(first, length, step):
-    assert orders_from_text(f"{first}..{first + length}:{step}") == tuple(range(first, first + length + 1, step))
+    assert orders_from_text(f"{first}..{first + length}:{step}") == tuple(
+        range(first, first + length + 1, step)
+    )
 
 
 @pytest.mark.parametrize(
@@ -63,7 +64,10 @@ def test_bad_orders(text, words):
     [
         ("flat", RegulatorChoice(name="flat")),
         ("exponential:alpha=2", RegulatorChoice(name="exponential", parameters={"alpha": 2.0})),
-        ("theta: alpha = 1/4 , power=3", RegulatorChoice(name="theta", parameters={"alpha": 0.25, "power": 3.0})),
+        (
+            "theta: alpha = 1/4 , power=3",
+            RegulatorChoice(name="theta", parameters={"alpha": 0.25, "power": 3.0}),
+        ),
         ("gaussian:alpha=-1.5e-3", RegulatorChoice(name="gaussian", parameters={"alpha": -1.5e-3})),
         (
             "custom:a*exp(-y)*(1+b*y),a=1,b=0.1",

@@ -13,7 +13,7 @@ from frg.errors import InputError, Place
 from frg.language.algebra import Refused, constant_value, substitute
 from frg.language.grammar import parse, parse_custom_shape
 from frg.language.names import NameTable
-from frg.language.printing import expression_text
+from frg.language.wording import expression_text
 
 x, y, rho, tau = sympy.symbols("x y rho tau")
 U, V = sympy.Function("U"), sympy.Function("V")

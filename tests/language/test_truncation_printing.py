@@ -9,7 +9,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from frg.errors import InputError
-from frg.language.printing import canonical_text, expression_text, to_text
+from frg.language.printing import canonical_text, to_text
 from frg.language.reader import read_truncation, read_truncation_text
 from frg.language.truncation import (
     Grid,
@@ -21,6 +21,7 @@ from frg.language.truncation import (
     Truncation,
     WaveFunction,
 )
+from frg.language.wording import expression_text
 
 FILES = sorted((Path(__file__).parent / "data").glob("*.toml"))
 n, N, d, eps = sympy.symbols("n N d eps")
@@ -92,9 +93,7 @@ regulators = st.one_of(
     st.builds(
         lambda a, b: RegulatorChoice(name="theta", parameters={"alpha": a, "power": b}), finite, finite
     ),
-    st.builds(
-        lambda a: RegulatorChoice(name="custom", expression="a*exp(-y)", parameters={"a": a}), finite
-    ),
+    st.builds(lambda a: RegulatorChoice(name="custom", expression="a*exp(-y)", parameters={"a": a}), finite),
     st.just(RegulatorChoice(name="flat")),
 )
 studies = st.builds(
@@ -125,7 +124,10 @@ def functions(name, of):
 def actions(draw):
     two = draw(st.booleans())
     of = ("rho", "tau") if two else ("rho",)
-    wave = draw(st.none() | st.builds(WaveFunction, name=st.just("Z"), at=points, mode=st.sampled_from(["auto", "radial"])))
+    wave = draw(
+        st.none()
+        | st.builds(WaveFunction, name=st.just("Z"), at=points, mode=st.sampled_from(["auto", "radial"]))
+    )
     function = draw(functions("U", of))
     kinetic = D(phi, mu) ** 2 / 2 * (1 if wave is None else sympy.Symbol("Z"))
     extra = draw(polynomials([phi**2, chi, eps])) * g
