@@ -140,6 +140,7 @@ def fixed_point(given: FixedPoint) -> FixedPoint:
         marginal=operator.index(given.marginal),
         certified=None if given.certified is None else bool(given.certified),
         notes=_notes(given.notes),
+        landmarks=_reals(given.landmarks, f"landmarks of {name}"),
         profile=None if given.profile is None else _profile(given.profile, f"profile of {name}"),
     )
 

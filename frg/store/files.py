@@ -173,7 +173,7 @@ class WriterLock:
                 os.close(descriptor)
                 if time.monotonic() > deadline:
                     raise StoreError(
-                        "another process is writing this run",
+                        "another writer has this run open",
                         remedy="wait until it has finished or stop it; a run has one writer at a time",
                         place=Place(source=str(path)),
                     ) from None

@@ -81,8 +81,8 @@ def open_checked(data: bytes, path: str | os.PathLike[str], *, whole: bool) -> I
 
 
 @contextlib.contextmanager
-def translated(path: str | os.PathLike[str]) -> Iterator[None]:
-    """Whatever the HDF5 library raises on a damaged file becomes a StoreError that names the file."""
+def translated(path: str | os.PathLike[str], done: str = "read") -> Iterator[None]:
+    """Whatever the HDF5 library raises becomes a StoreError that names the file."""
     try:
         yield
     except FrgError as error:
@@ -90,8 +90,10 @@ def translated(path: str | os.PathLike[str]) -> Iterator[None]:
     except Exception as error:  # noqa: BLE001  (h5py's errors have no common base)
         detail = " ".join(str(error).split())[:200]
         raise StoreError(
-            f"the run file cannot be read: {type(error).__name__}: {detail}",
-            remedy="restore it from a copy, or repeat the run",
+            f"the run file cannot be {done}: {type(error).__name__}: {detail}",
+            remedy="restore it from a copy, or repeat the run"
+            if done == "read"
+            else "see to free memory and resume the run; all committed steps are kept",
             place=Place(source=str(path)),
         ) from None
 

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import os
 import stat
+import uuid
 from collections.abc import Mapping, Sequence
 from dataclasses import replace
 from pathlib import Path
@@ -114,7 +115,7 @@ class HDF5Store(AbstractStore):
             raise
 
     def _serialised(self, run: Run, before: Run) -> bytes:
-        with guard.translated(self._path):
+        with guard.translated(self._path, "written"):
             if self._image is None:
                 self._image = _new_image(run)
             else:
@@ -133,7 +134,8 @@ class HDF5Store(AbstractStore):
 def _new_image(run: Run) -> h5py.File:
     import h5py
 
-    image = h5py.File("run", "w", driver="core", backing_store=False, track_order=False)
+    # The library takes two open images of one name for one file, though neither ever reaches the disk.
+    image = h5py.File(uuid.uuid4().hex, "w", driver="core", backing_store=False)
     try:
         layout.write_run(image, run)
     except BaseException:

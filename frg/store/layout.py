@@ -126,6 +126,7 @@ def _write_point(group: h5py.Group, point: FixedPoint) -> None:
         relevant=point.relevant,
         marginal=point.marginal,
         notes=to_json(point.notes, "the notes"),
+        landmarks=to_json(point.landmarks, "the landmarks"),
     )
     if point.certified is not None:
         group.attrs["certified"] = int(point.certified)

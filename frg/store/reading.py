@@ -103,6 +103,7 @@ def _read_point(group: h5py.Group) -> FixedPoint:
         marginal=guard.whole(group, "marginal"),
         certified=bool(guard.whole(group, "certified")) if "certified" in group.attrs else None,
         notes=_texts(group, "notes"),
+        landmarks=_mapping(group, "landmarks") if "landmarks" in group.attrs else {},
         profile=_read_profile(guard.group(group, "profile")) if "profile" in group else None,
     )
 

@@ -24,7 +24,7 @@ from frg.store.hdf5 import open_for_resume, read_run
 from frg.store.memory import MemoryStore
 from frg.store.naming import list_runs
 
-# Resumes the run if it is there, commits numbered steps without end, and reports each commit once it returned.
+# Resumes the run if it is there, commits numbered steps without end, and reports each commit when done.
 WRITER = """
 import sys
 from pathlib import Path
@@ -43,7 +43,8 @@ else:
     store = HDF5Store.create(path, inputs, command="c", created_utc="u", frg_version="1", packages={})
 while True:
     n = store.count
-    store.append_step(Step(order={"n": n}, outcome=Outcome.NONE_FOUND, search={"starts": n * n}, seconds=n / 7))
+    search = {"starts": n * n}
+    store.append_step(Step(order={"n": n}, outcome=Outcome.NONE_FOUND, search=search, seconds=n / 7))
     print(n, flush=True)
 """
 
@@ -86,9 +87,9 @@ def test_a_live_writer_is_seen_and_a_second_one_refused(tmp_path: Path, samples)
         try:
             assert [s.status for s in list_runs(tmp_path)] == ["running"]
             assert read_run(path).status == "running"
-            with pytest.raises(StoreError, match="another process is writing this run"):
+            with pytest.raises(StoreError, match="another writer has this run open"):
                 open_for_resume(path)
-            with pytest.raises(StoreError, match="another process is writing this run"):
+            with pytest.raises(StoreError, match="another writer has this run open"):
                 samples.create(path)
         finally:
             process.kill()

@@ -1,4 +1,4 @@
-"""Files from strangers: every damaged, foreign or malicious file is one StoreError, before its content is used."""
+"""Files from strangers: damaged, foreign and malicious ones are one StoreError before they are used."""
 
 from __future__ import annotations
 
@@ -35,7 +35,9 @@ def test_flipped_bytes_are_always_noticed(run_file: Path) -> None:
     choose = random.Random(1)
     for _ in range(400):
         damaged = bytearray(data)
-        for position in choose.choices(range(8, len(data) - files._SEAL_LENGTH), k=choose.choice([1, 1, 3, 50])):
+        for position in choose.choices(
+            range(8, len(data) - files._SEAL_LENGTH), k=choose.choice([1, 1, 3, 50])
+        ):
             damaged[position] ^= choose.randrange(1, 256)
         run_file.write_bytes(damaged)
         with pytest.raises(StoreError, match="does not match its checksum"):
@@ -70,8 +72,10 @@ def test_a_cut_file_is_never_read_as_something_else(run_file: Path) -> None:
                 read_run(run_file)
 
 
-def test_damage_without_a_seal_reaches_only_the_child(run_file: Path, monkeypatch: pytest.MonkeyPatch) -> None:
-    """Bytes flipped in a file that never had a seal: an error or a run, never another exception or a crash."""
+def test_damage_without_a_seal_reaches_only_the_child(
+    run_file: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """Bytes flipped in a file that never had a seal: an error or a run, never anything else."""
     monkeypatch.setattr(vetting, "TIME_LIMIT", 3)
     data, _ = files.unseal(run_file.read_bytes())
     positions = [i for i, byte in enumerate(data) if byte and i >= 8]
@@ -236,9 +240,15 @@ BROKEN: list[tuple[Edit, str]] = [
     (lambda f: f[POINT].move("theta", "thetas"), "dataset theta is missing"),
     (lambda f: (f[POINT].__delitem__("theta"), f[POINT].create_group("theta")), "dataset theta is missing"),
     (lambda f: (f[POINT].__delitem__("right"), f[POINT].create_dataset("right", data=np.eye(3))), "shape"),
-    (lambda f: (f[POINT].__delitem__("eta"), f[POINT].create_dataset("eta", data=np.ones(3))), "cannot be read"),
     (
-        lambda f: (f[POINT].__delitem__("couplings"), f[POINT].create_dataset("couplings", data=[b"a", b"b"])),
+        lambda f: (f[POINT].__delitem__("eta"), f[POINT].create_dataset("eta", data=np.ones(3))),
+        "cannot be read",
+    ),
+    (
+        lambda f: (
+            f[POINT].__delitem__("couplings"),
+            f[POINT].create_dataset("couplings", data=[b"a", b"b"]),
+        ),
         "no numbers",
     ),
     (

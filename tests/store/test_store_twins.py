@@ -111,7 +111,9 @@ VERDICTS = st.builds(
     relevant=st.none() | INT,
     finite=st.sampled_from(("supported", "not supported", "undecided")),
     reasons=NOTES,
-    exponents=st.lists(st.builds(Extrapolation, value=COMPLEX, error=REAL, last=COMPLEX), max_size=2).map(tuple),
+    exponents=st.lists(st.builds(Extrapolation, value=COMPLEX, error=REAL, last=COMPLEX), max_size=2).map(
+        tuple
+    ),
     growth=st.none() | growths(),
 )
 SETTING = st.recursive(
@@ -142,7 +144,12 @@ INPUTS = st.builds(
     status=st.sampled_from(("running", "complete", "interrupted", "failed")),
 )
 def test_twins_agree_at_every_commit(
-    tmp_path: Path, inputs: Inputs, steps: list[Step], followed: list[Track], verdict: Verdict | None, status: str
+    tmp_path: Path,
+    inputs: Inputs,
+    steps: list[Step],
+    followed: list[Track],
+    verdict: Verdict | None,
+    status: str,
 ) -> None:
     path = tmp_path / f"{next(COUNTER)}.h5"
     about = {"command": "c", "created_utc": "t", "frg_version": "v", "packages": {"p": "1"}}
@@ -237,3 +244,11 @@ def test_shapes_that_disagree_are_refused_and_nothing_is_committed(tmp_path: Pat
         assert store.read().steps == ()
         store.append_step(step)
         assert len(store.read().steps) == 1
+
+
+def test_two_runs_can_be_open_at_once(tmp_path: Path, samples) -> None:
+    with samples.create(tmp_path / "one.h5") as one, samples.create(tmp_path / "two.h5") as two:
+        for n in samples.orders:
+            one.append_step(samples.step(n))
+            two.append_step(samples.step(n))
+        assert differences(one.read(), two.read()) == ()
