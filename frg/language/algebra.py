@@ -20,6 +20,7 @@ LARGEST_DECIMAL_EXPONENT = 300
 NUMBER_BITS = 2048  # of one exact number
 TOTAL_BITS = 16384  # of all exact numbers met in one expression together
 LARGEST_ROOT = 10_000
+MOST_NODES = 5000
 TAME_NODES = 80
 TAME_HEIGHT = 3
 TAME_EXPONENT = 16
@@ -151,7 +152,12 @@ class SafeAlgebra:
 def substitute(expression: sympy.Expr, values: Mapping[str, sympy.Expr]) -> sympy.Expr:
     """Put `values` in for symbols by name, rebuilding the tree with bounded steps.
 
-    Arguments of running functions are treated too; a derivative keeps its variables. Raises `Refused`."""
+    Arguments of running functions are treated too; a derivative keeps its variables. Raises `Refused`, also
+    where the result would have more than 5000 nodes (definitions of definitions grow like powers)."""
+    if _nodes(expression, {name: _nodes(value) for name, value in values.items()}) > MOST_NODES:
+        raise Refused(
+            "with everything put in, the expression becomes too large", "use fewer nested definitions"
+        )
     try:
         return _substitute(expression, values, SafeAlgebra())
     except GIVING_UP:
@@ -290,8 +296,11 @@ def _tame(e: sympy.Expr) -> bool:
     return _nodes(e) <= TAME_NODES and _height(e) <= TAME_HEIGHT
 
 
-def _nodes(e: sympy.Expr) -> int:
-    return 1 + sum(_nodes(a) for a in e.args)
+def _nodes(e: sympy.Expr, sizes: Mapping[str, int] | None = None) -> int:
+    """The number of nodes, with symbols counted as `sizes` says: the size after a substitution."""
+    if sizes is not None and e.is_Symbol:
+        return sizes.get(e.name, 1)
+    return 1 + sum(_nodes(a, sizes) for a in e.args)
 
 
 def _height(e: sympy.Expr) -> int:

@@ -1,10 +1,13 @@
 """A Lagrangian that is no scalar, lacks a kinetic term, or leaves a running quantity unused is refused."""
 
+import dataclasses
 from pathlib import Path
 
 import pytest
+import sympy
 
 from frg.errors import InputError
+from frg.language.action import check_action
 from frg.language.reader import read_truncation_text
 
 DATA = Path(__file__).parent / "data"
@@ -107,6 +110,18 @@ def test_a_coordinate_must_depend_on_a_field():
     text = model("Z/2*d(phi,mu)^2 + U(rho)").replace('rho = "phi^2/2"', 'rho = "phi^3"')
     with pytest.raises(InputError, match="not contracted"):
         read_truncation_text(text, source="f")
+
+
+def test_a_truncation_built_by_hand_can_be_checked():
+    truncation = read_truncation_text(model("Z/2*d(phi,mu)^2 + U(rho)"), source="f")
+    check_action(truncation)
+    phi, mu = sympy.symbols("phi mu")
+    free = dataclasses.replace(truncation, lagrangian=truncation.lagrangian + sympy.Function("d")(phi, mu))
+    with pytest.raises(InputError, match="index mu is free"):
+        check_action(free)
+    unknown = dataclasses.replace(truncation, lagrangian=truncation.lagrangian + sympy.Function("W")(phi))
+    with pytest.raises(InputError, match=r"not in \[running\]"):
+        check_action(unknown)
 
 
 def test_fields_are_needed():

@@ -316,6 +316,16 @@ def test_overlong_and_overdeep():
     assert "TOML" in error_of("a = " + "1" * 10**5).message
 
 
+def test_definitions_that_grow_like_powers():
+    lines = [f'r{k + 1} = "sin(r{k}) + cos(r{k}) + exp(-r{k})"' for k in range(1, 40)]
+    chain = "\n".join(['r1 = "phi^2/2"', *lines])
+    text = changed("on_model", 'rho = "phi^2/2"', chain + '\nrho = "phi^2/2 + r40"')
+    assert "too large" in error_of(text).message
+    lines = [f'r{k + 1} = "sin(r{k}) + cos(2*r{k})"' for k in range(1, 40)]
+    text = changed("on_model", "N = 1", "\n".join(["N = 1", "r1 = 1", *lines]))
+    assert "too large" in error_of(text).message
+
+
 def test_look_alike_in_a_file():
     error = error_of(changed("on_model", "+ U(rho)", "+ U(rh\u043e)"))
     assert "U+043E" in error.message
