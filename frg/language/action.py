@@ -50,9 +50,7 @@ class _Check:
         self.place = place
 
     def fail(self, message: str, remedy: str, *, not_yet: bool = False, text: str | None = None) -> NoReturn:
-        place = Place(
-            self.place.source, self.place.line, self.place.column, text[:80] if text else self.place.text
-        )
+        place = Place(self.place.source, self.place.line, self.place.column, text[:80] if text else self.place.text)
         raise (NotYet if not_yet else InputError)(message, remedy=remedy, place=place)
 
     def run(self) -> None:
@@ -87,9 +85,7 @@ class _Check:
             if name == "d":
                 continue
             if name not in known:
-                self.fail(
-                    f"{name} is called in the action and is not in [running]", f"add {name} to [running]"
-                )
+                self.fail(f"{name} is called in the action and is not in [running]", f"add {name} to [running]")
             of = tuple(str(a) for a in call.args)
             if of != known[name].of:
                 wanted = f"{name}({', '.join(known[name].of)})"
@@ -299,9 +295,7 @@ class _Check:
     def coordinate(self, function: RunningFunction, name: str) -> None:
         definitions: Mapping[str, sympy.Expr] = self.truncation.definitions
         if name not in definitions:
-            self.fail(
-                f"{function.name} is a function of {name}, which is not in [definitions]", f"define {name}"
-            )
+            self.fail(f"{function.name} is a function of {name}, which is not in [definitions]", f"define {name}")
         value = self.expanded(definitions[name])
         if not {s.name for s in value.free_symbols} & {f.name for f in self.truncation.fields}:
             self.fail(

@@ -91,9 +91,7 @@ class SafeAlgebra:
         if value is not None:
             bits = _bits_outside_sums(base)
             if not exponent.is_Integer and bits > ROOT_BITS:
-                raise Refused(
-                    "the number under the root has too many digits", "use a number with fewer digits"
-                )
+                raise Refused("the number under the root has too many digits", "use a number with fewer digits")
             self._spend(bits * math.ceil(abs(value)))
         self._count_root(base, exponent)
         if not (exponent.is_Integer or (_tame(base) and _tame(exponent))):
@@ -155,9 +153,7 @@ def substitute(expression: sympy.Expr, values: Mapping[str, sympy.Expr]) -> symp
     Arguments of running functions are treated too; a derivative keeps its variables. Raises `Refused`, also
     where the result would have more than 5000 nodes (definitions of definitions grow like powers)."""
     if _nodes(expression, {name: _nodes(value) for name, value in values.items()}) > MOST_NODES:
-        raise Refused(
-            "with everything put in, the expression becomes too large", "use fewer nested definitions"
-        )
+        raise Refused("with everything put in, the expression becomes too large", "use fewer nested definitions")
     try:
         return _substitute(expression, values, SafeAlgebra())
     except GIVING_UP:
@@ -192,9 +188,7 @@ def check_result(expression: sympy.Expr) -> None:
 
     for node in sympy.preorder_traversal(expression):
         if node in (sympy.I, sympy.zoo, sympy.nan, sympy.oo, -sympy.oo):
-            raise Refused(
-                "the expression is not a real finite number", "check for roots of negative numbers and poles"
-            )
+            raise Refused("the expression is not a real finite number", "check for roots of negative numbers and poles")
         # numerator and denominator of what is printed must be readable as literals
         if node.is_Rational and max(abs(int(node.p)), int(node.q)) >= 10**LARGEST_DECIMAL_EXPONENT:
             raise Refused("a number in the expression has too many digits", _TOO_LARGE)
@@ -283,9 +277,7 @@ def _float_call(name: str, x: float) -> float:
     try:
         return _bounded(_FLOAT_FUNCTIONS[name](x))
     except (ValueError, ZeroDivisionError):
-        raise Refused(
-            f"{name} has no finite real value at {x:g}", "keep away from poles and branch cuts"
-        ) from None
+        raise Refused(f"{name} has no finite real value at {x:g}", "keep away from poles and branch cuts") from None
     except OverflowError:
         raise Refused(f"{name}({x:g}) is too large for a double", _TOO_LARGE) from None
 

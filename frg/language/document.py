@@ -35,9 +35,7 @@ class Document:
         for length in range(len(path), 0, -1):
             spot = self.spots.get(path[:length])
             if spot is not None:
-                return Place(
-                    source=self.source, line=spot.key_line, column=spot.key_column, text=path[length - 1]
-                )
+                return Place(source=self.source, line=spot.key_line, column=spot.key_column, text=path[length - 1])
         return Place(source=self.source, text=path[-1] if path else None)
 
     def value_place(self, path: Path) -> Place:
@@ -59,9 +57,7 @@ class Document:
         return found
 
     def fail(self, message: str, remedy: str, path: Path, *, key: bool = False) -> NoReturn:
-        raise InputError(
-            message, remedy=remedy, place=self.key_place(path) if key else self.value_place(path)
-        )
+        raise InputError(message, remedy=remedy, place=self.key_place(path) if key else self.value_place(path))
 
     def table(self, path: Path) -> dict[str, Any]:
         """The table at a path, {} where there is none."""
@@ -84,9 +80,7 @@ class Document:
         for key in self.table(path):
             here = (*path, key)
             if key in later:
-                raise NotYet(
-                    f"{shown(here)} is not supported yet", remedy=later[key], place=self.key_place(here)
-                )
+                raise NotYet(f"{shown(here)} is not supported yet", remedy=later[key], place=self.key_place(here))
             if key not in allowed:
                 inside = f" in [{'.'.join(path)}]" if path else ""
                 self.fail(
@@ -178,9 +172,7 @@ def read_text(path: str | os.PathLike[str]) -> str:
     try:
         information = os.stat(path)
         if stat.S_ISDIR(information.st_mode):
-            raise InputError(
-                "this is a directory, not a file", remedy="name the truncation file in it", place=place
-            )
+            raise InputError("this is a directory, not a file", remedy="name the truncation file in it", place=place)
         if not stat.S_ISREG(information.st_mode):
             raise InputError("this is not a regular file", remedy="name a truncation file", place=place)
         if information.st_size > LARGEST_FILE:
@@ -190,9 +182,7 @@ def read_text(path: str | os.PathLike[str]) -> str:
     except FileNotFoundError:
         raise InputError("there is no such file", remedy=_neighbour(source), place=place) from None
     except PermissionError:
-        raise InputError(
-            "no permission to read the file", remedy="change its access rights", place=place
-        ) from None
+        raise InputError("no permission to read the file", remedy="change its access rights", place=place) from None
     except (OSError, ValueError) as error:
         reason = getattr(error, "strerror", None) or str(error)
         raise InputError(f"the file cannot be read: {reason}", remedy="check the name", place=place) from None

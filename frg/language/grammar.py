@@ -201,9 +201,7 @@ class _Parser:
     def close(self, opening: Token) -> None:
         if not self.at(")"):
             if self.token.kind == "end":
-                raise self.error(
-                    "a bracket is never closed", "add the missing )", opening.start, len(self.text)
-                )
+                raise self.error("a bracket is never closed", "add the missing )", opening.start, len(self.text))
             raise self.unexpected(after_operand=True)
         self.take()
 
@@ -219,9 +217,7 @@ class _Parser:
                 token.stop,
             )
         if token.text == ")":
-            return self.error(
-                "a bracket is closed that was never opened", "remove it", token.start, token.stop
-            )
+            return self.error("a bracket is closed that was never opened", "remove it", token.start, token.stop)
         if token.kind in ("number", "name") or token.text == "(":
             return self.error(
                 f"an operator is missing before {token.text!r}",
@@ -308,9 +304,7 @@ class _Parser:
     def arguments(self, token: Token) -> list[sympy.Expr]:
         opening = self.take()
         if self.at(")"):
-            raise self.error(
-                f"{token.text} needs an argument", f"write {token.text}(…)", token.start, self.token.stop
-            )
+            raise self.error(f"{token.text} needs an argument", f"write {token.text}(…)", token.start, self.token.stop)
         found = [self.sum()]
         while self.at(","):
             self.take()
@@ -338,9 +332,7 @@ class _Parser:
         inner = function.expr if isinstance(function, sympy.Derivative) else function
         remedy = "write diff(U(rho), rho) or diff(U(rho), rho, 2)"
         if type(inner).__name__ not in self.names.functions or not all(a.is_Symbol for a in inner.args):
-            raise self.error(
-                "diff differentiates a running function of plain coordinates", remedy, token.start, stop
-            )
+            raise self.error("diff differentiates a running function of plain coordinates", remedy, token.start, stop)
         counts = dict.fromkeys(inner.args, 0)
         if function is not inner:
             counts |= {v: int(k) for v, k in function.variable_count}
@@ -408,9 +400,7 @@ class _Parser:
             )
         for word in words[1:]:
             if word.text not in table.lorentz:
-                what = (
-                    f"it is a {table.names[word.text]} here" if word.text in table.names else "it is unknown"
-                )
+                what = f"it is a {table.names[word.text]} here" if word.text in table.names else "it is unknown"
                 raise self.error(
                     f"{word.text!r} is no Lorentz name: {what}",
                     suggestion(word.text, table.lorentz, "use a free Lorentz name"),

@@ -69,9 +69,7 @@ def suggestion(name: str, known: Iterable[str], otherwise: str) -> str:
     listed = ", ".join(choices[:20]) + (", …" if len(choices) > 20 else "")
     match = nearest(name, choices)
     if match is not None:
-        return f"did you mean {match!r}? Otherwise {otherwise}" + (
-            f" (known here: {listed})" if listed else ""
-        )
+        return f"did you mean {match!r}? Otherwise {otherwise}" + (f" (known here: {listed})" if listed else "")
     return otherwise + (f" (known here: {listed})" if listed else "")
 
 

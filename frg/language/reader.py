@@ -107,9 +107,7 @@ def _check_action(document: Document, truncation: Truncation) -> None:
     except InputError as error:
         text, fragment = document.string(path, '"…"'), error.place.text or ""
         words = re.findall(r"\w+|[^\w\s]", fragment)
-        found = (
-            re.search(r"(?<!\w)" + r"\s*".join(map(re.escape, words)) + r"(?!\w)", text) if words else None
-        )
+        found = re.search(r"(?<!\w)" + r"\s*".join(map(re.escape, words)) + r"(?!\w)", text) if words else None
         if found is None or fragment == start.text:
             raise
         place = place_of(text, found.start(), found.end(), start)
@@ -172,9 +170,7 @@ def _claim_names(document: Document, *, typed: bool) -> dict[str, str]:
                 key=True,
             )
         if name in kinds:
-            document.fail(
-                f"{name!r} is already the name of a {kinds[name]}", "rename one of them", path, key=True
-            )
+            document.fail(f"{name!r} is already the name of a {kinds[name]}", "rename one of them", path, key=True)
         kinds[name] = kind
 
     for section, kind in (("parameters", "parameter"), ("fields", "field"), ("definitions", "definition")):
@@ -213,12 +209,7 @@ def _check_coupling_names(document: Document, function: str, kinds: Mapping[str,
     """Couplings of a function U are reported as U1, U2, U_min: nothing else that runs may be called so."""
     for name, kind in kinds.items():
         rest = name.removeprefix(function)
-        if (
-            kind == "coupling"
-            and name != function
-            and name.startswith(function)
-            and (rest.isdigit() or rest == "_min")
-        ):
+        if kind == "coupling" and name != function and name.startswith(function) and (rest.isdigit() or rest == "_min"):
             document.fail(
                 f"{name!r} is also the name of a coupling of the function {function}",
                 "rename one of them",
@@ -230,9 +221,7 @@ def _check_coupling_names(document: Document, function: str, kinds: Mapping[str,
 def _lagrangian(document: Document, kinds: Mapping[str, str], running: tuple[Running, ...]) -> sympy.Expr:
     path = ("action", "lagrangian")
     if document.get(path) is None:
-        document.fail(
-            "[action] has no lagrangian", 'add lagrangian = "d(phi,mu)^2/2 + U(rho)"', ("action",), key=True
-        )
+        document.fail("[action] has no lagrangian", 'add lagrangian = "d(phi,mu)^2/2 + U(rho)"', ("action",), key=True)
     text = document.string(path, '"d(phi,mu)^2/2 + U(rho)"')
     plain = ("parameter", "field", "definition", "coupling", "wave function")
     names = NameTable(

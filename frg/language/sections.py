@@ -37,9 +37,7 @@ def expression(document: Document, path: Path, names: NameTable) -> sympy.Expr:
         return parse(value, names=names, place=document.value_place(path))
     if isinstance(value, (int, str)) and not isinstance(value, bool):
         return exact_number(document, path, str(value))
-    document.fail(
-        f"{shown(path)} must be a number or an expression in quotes", f'write {path[-1]} = 3 or "…"', path
-    )
+    document.fail(f"{shown(path)} must be a number or an expression in quotes", f'write {path[-1]} = 3 or "…"', path)
 
 
 def exact_number(document: Document, path: Path, text: str) -> sympy.Expr:
@@ -54,9 +52,7 @@ def exact_number(document: Document, path: Path, text: str) -> sympy.Expr:
     return -number if text.startswith("-") else number
 
 
-def _constant(
-    document: Document, path: Path, value: sympy.Expr, parameters: Mapping[str, sympy.Expr]
-) -> float:
+def _constant(document: Document, path: Path, value: sympy.Expr, parameters: Mapping[str, sympy.Expr]) -> float:
     """The double nearest to an expression with the parameters put in; errors at `path`."""
     try:
         number = constant_value(substitute(value, parameters))
@@ -84,9 +80,7 @@ def read_parameters(document: Document, overrides: Mapping[str, str]) -> dict[st
         if name in overrides:
             values[name] = _override(name, overrides[name])
             continue
-        earlier = NameTable(
-            names=dict.fromkeys(values, "parameter"), advice="declare it further up in [parameters]"
-        )
+        earlier = NameTable(names=dict.fromkeys(values, "parameter"), advice="declare it further up in [parameters]")
         value = expression(document, path, earlier)
         _constant(document, path, value, values)
         values[name] = substitute(value, values)
@@ -103,9 +97,7 @@ def _override(name: str, text: str) -> sympy.Expr:
             f"the value of {name} is no finite number: {error.message}", remedy=error.remedy, place=place
         ) from None
     except Refused as refusal:
-        raise InputError(
-            f"the value of {name}: {refusal.message}", remedy=refusal.remedy, place=place
-        ) from None
+        raise InputError(f"the value of {name}: {refusal.message}", remedy=refusal.remedy, place=place) from None
     return value
 
 
@@ -296,9 +288,7 @@ def _grid(document: Document, path: Path, parameters: Mapping[str, sympy.Expr]) 
     document.check_keys(path, ("points", "upto"))
     points = document.get((*path, "points"))
     if not isinstance(points, int) or isinstance(points, bool) or not 4 <= points <= MOST_GRID_POINTS:
-        document.fail(
-            "grid.points must be a whole number", f"give 4 to {MOST_GRID_POINTS} points", (*path, "points")
-        )
+        document.fail("grid.points must be a whole number", f"give 4 to {MOST_GRID_POINTS} points", (*path, "points"))
     if document.get((*path, "upto")) is None:
         document.fail("the grid has no upto", "add upto = 6.0, in units of the minimum", path, key=True)
     upto = _constant(
@@ -308,7 +298,5 @@ def _grid(document: Document, path: Path, parameters: Mapping[str, sympy.Expr]) 
         parameters,
     )
     if upto <= 0:
-        document.fail(
-            "grid.upto must be positive", "give the box size in units of the minimum", (*path, "upto")
-        )
+        document.fail("grid.upto must be positive", "give the box size in units of the minimum", (*path, "upto"))
     return Grid(points=points, upto=upto)

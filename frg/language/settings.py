@@ -33,9 +33,7 @@ def read_regulator(document: Document) -> RegulatorChoice:
         where: Path = ("regulator", "expression")
         used.add("expression")
         if "expression" not in table:
-            document.fail(
-                "a custom regulator needs its shape", 'add expression = "a*exp(-y)" and a = 1', path
-            )
+            document.fail("a custom regulator needs its shape", 'add expression = "a*exp(-y)" and a = 1', path)
         choice = RegulatorChoice(name="custom", expression=document.string(where, '"a*exp(-y)"'))
     else:
         where = path
@@ -46,13 +44,9 @@ def read_regulator(document: Document) -> RegulatorChoice:
             continue
         here = ("regulator", key)
         if not is_name(key) or key in ("expression", "y"):
-            document.fail(
-                f"{key!r} cannot name a parameter", "use letters, digits and underscores", here, key=True
-            )
+            document.fail(f"{key!r} cannot name a parameter", "use letters, digits and underscores", here, key=True)
         if key in parameters:
-            document.fail(
-                f"the parameter {key} is given twice", "remove it here or in the shape", here, key=True
-            )
+            document.fail(f"the parameter {key} is given twice", "remove it here or in the shape", here, key=True)
         parameters[key] = _regulator_parameter(document, here)
     if choice.expression is not None:
         place = document.value_place(where)

@@ -157,9 +157,7 @@ class Truncation:
             raise self._no_number(expression, refusal) from None
         if number is None:
             left = ", ".join(sorted(s.name for s in exact.free_symbols)) or str(exact)
-            raise self._no_number(
-                expression, Refused(f"no value is known for {left}", "declare it in [parameters]")
-            )
+            raise self._no_number(expression, Refused(f"no value is known for {left}", "declare it in [parameters]"))
         return number
 
     def expanded(self, expression: sympy.Expr) -> sympy.Expr:

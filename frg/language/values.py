@@ -16,9 +16,7 @@ HIGHEST_ORDER = 1000
 MOST_ORDERS = 500
 _RANGE = re.compile(r"\s*(\d{1,6})\s*(?:\.\.\s*(\d{1,6})\s*(?::\s*(\d{1,6})\s*)?)?")
 _RANGE_REMEDY = 'write a range "2..12", a range with a step "2..12:2", numbers "2,4,8", or one number'
-_SPEC_REMEDY = (
-    "write NAME or NAME:parameter=value,… , for example exponential:alpha=2 or custom:a*exp(-y),a=1"
-)
+_SPEC_REMEDY = "write NAME or NAME:parameter=value,… , for example exponential:alpha=2 or custom:a*exp(-y),a=1"
 
 
 def orders_from_text(text: str, *, place: Place | None = None) -> tuple[int, ...]:
@@ -30,9 +28,7 @@ def orders_from_text(text: str, *, place: Place | None = None) -> tuple[int, ...
     for part in text[:4000].split(","):
         match = _RANGE.fullmatch(part)
         if match is None or not part.isascii():
-            raise InputError(
-                f"{part.strip()!r} is no order or range of orders", remedy=_RANGE_REMEDY, place=where
-            )
+            raise InputError(f"{part.strip()!r} is no order or range of orders", remedy=_RANGE_REMEDY, place=where)
         first = int(match[1])
         last = int(match[2]) if match[2] else first
         step = int(match[3]) if match[3] else 1
@@ -53,9 +49,7 @@ def check_orders(values: list[int], place: Place) -> tuple[int, ...]:
     if not values:
         raise InputError("the list of orders is empty", remedy=_RANGE_REMEDY, place=place)
     if len(values) > MOST_ORDERS:
-        raise InputError(
-            f"{len(values)} orders are too many", remedy=f"give at most {MOST_ORDERS}", place=place
-        )
+        raise InputError(f"{len(values)} orders are too many", remedy=f"give at most {MOST_ORDERS}", place=place)
     if min(values) < 0 or max(values) > HIGHEST_ORDER:
         raise InputError(f"orders run from 0 to {HIGHEST_ORDER}", remedy="change the values", place=place)
     if any(b <= a for a, b in itertools.pairwise(values)):
@@ -71,9 +65,7 @@ def number_from_text(text: str, *, place: Place) -> float:
     except Refused as refusal:
         raise InputError(refusal.message, remedy=refusal.remedy, place=place) from None
     if value is None or not math.isfinite(value):
-        raise InputError(
-            f"{text!r} is no finite number", remedy="give a number such as 2.7 or 1/3", place=place
-        )
+        raise InputError(f"{text!r} is no finite number", remedy="give a number such as 2.7 or 1/3", place=place)
     return value
 
 
@@ -95,9 +87,7 @@ def regulator_choice_from_text(text: str, *, place: Place | None = None) -> Regu
     expression, *assignments = _split_outside_brackets(rest)
     if not expression.strip():
         raise InputError("a custom regulator needs its shape", remedy=_SPEC_REMEDY, place=where)
-    return RegulatorChoice(
-        name=name, parameters=_assignments(assignments, where), expression=expression.strip()
-    )
+    return RegulatorChoice(name=name, parameters=_assignments(assignments, where), expression=expression.strip())
 
 
 def _assignments(parts: list[str], place: Place) -> dict[str, float]:
@@ -106,9 +96,7 @@ def _assignments(parts: list[str], place: Place) -> dict[str, float]:
         key, equals, value = part.partition("=")
         key = key.strip()
         if not equals or not is_name(key):
-            raise InputError(
-                f"{part.strip()!r} is not of the form parameter=value", remedy=_SPEC_REMEDY, place=place
-            )
+            raise InputError(f"{part.strip()!r} is not of the form parameter=value", remedy=_SPEC_REMEDY, place=place)
         if key in found:
             raise InputError(f"the parameter {key} is given twice", remedy="remove one", place=place)
         if key in ("shape", "expression", "y"):

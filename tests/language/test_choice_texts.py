@@ -28,9 +28,7 @@ def test_orders(text, orders):
 
 @given(st.integers(0, 200), st.integers(0, 200), st.integers(1, 30))
 def test_orders_are_a_range(first, length, step):
-    assert orders_from_text(f"{first}..{first + length}:{step}") == tuple(
-        range(first, first + length + 1, step)
-    )
+    assert orders_from_text(f"{first}..{first + length}:{step}") == tuple(range(first, first + length + 1, step))
 
 
 @pytest.mark.parametrize(

@@ -164,8 +164,6 @@ def test_damaged_files(text):
 
 
 @settings(max_examples=60, deadline=None)
-@given(
-    st.sampled_from(TEXTS), st.dictionaries(st.sampled_from(["d", "N", "A", "M", "q"]), pieces, max_size=2)
-)
+@given(st.sampled_from(TEXTS), st.dictionaries(st.sampled_from(["d", "N", "A", "M", "q"]), pieces, max_size=2))
 def test_overrides(text, overrides):
     answer(read_truncation_text, text, source="fuzz", overrides=overrides)

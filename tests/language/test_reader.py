@@ -146,9 +146,7 @@ def test_expanded_and_value():
 
 def test_wave_function_options():
     text = changed("on_model", '"wave-function" }', '"wave-function", mode = "radial", at = "d/10" }')
-    assert read_truncation_text(text, source="f").wave_functions == (
-        WaveFunction(name="Z", mode="radial", at=d / 10),
-    )
+    assert read_truncation_text(text, source="f").wave_functions == (WaveFunction(name="Z", mode="radial", at=d / 10),)
 
 
 def test_windows_line_ends_and_byte_order_mark(tmp_path):
@@ -384,8 +382,6 @@ def test_not_yet(old, new, key):
 
 def test_not_yet_grid_of_two_coordinates_and_typed_wave_function():
     old = 'about = 0, order = "n-1"'
-    assert (
-        "grid" in error_of(changed("two_invariants", old, "grid = { points = 9, upto = 2 }"), NotYet).message
-    )
+    assert "grid" in error_of(changed("two_invariants", old, "grid = { points = 9, upto = 2 }"), NotYet).message
     text = changed("one_coupling", "[flow]", 'Z = { kind = "wave-function" }\n[flow]')
     assert "wave function" in error_of(text, NotYet).message

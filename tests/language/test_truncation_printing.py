@@ -90,9 +90,7 @@ def polynomials(symbols):
 points = st.one_of(st.just("minimum"), rationals, polynomials([eps]))
 orders = st.builds(lambda a, b: a * n + b, st.integers(1, 2), st.integers(0, 3))
 regulators = st.one_of(
-    st.builds(
-        lambda a, b: RegulatorChoice(name="theta", parameters={"alpha": a, "power": b}), finite, finite
-    ),
+    st.builds(lambda a, b: RegulatorChoice(name="theta", parameters={"alpha": a, "power": b}), finite, finite),
     st.builds(lambda a: RegulatorChoice(name="custom", expression="a*exp(-y)", parameters={"a": a}), finite),
     st.just(RegulatorChoice(name="flat")),
 )
@@ -125,8 +123,7 @@ def actions(draw):
     two = draw(st.booleans())
     of = ("rho", "tau") if two else ("rho",)
     wave = draw(
-        st.none()
-        | st.builds(WaveFunction, name=st.just("Z"), at=points, mode=st.sampled_from(["auto", "radial"]))
+        st.none() | st.builds(WaveFunction, name=st.just("Z"), at=points, mode=st.sampled_from(["auto", "radial"]))
     )
     function = draw(functions("U", of))
     kinetic = D(phi, mu) ** 2 / 2 * (1 if wave is None else sympy.Symbol("Z"))
