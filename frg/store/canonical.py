@@ -7,6 +7,7 @@ the last bit, whatever the store.
 from __future__ import annotations
 
 import json
+import math
 import numbers
 import operator
 from collections.abc import Mapping, Sequence
@@ -53,7 +54,7 @@ def plain(value: object, what: str, depth: int = 0) -> Any:
     if isinstance(value, int):
         return int(value)
     if isinstance(value, float):
-        return float(value)
+        return _json_float(value)
     if isinstance(value, numbers.Rational):
         return str(value)
     if isinstance(value, Mapping):
@@ -63,6 +64,11 @@ def plain(value: object, what: str, depth: int = 0) -> Any:
     if isinstance(value, (list, tuple)):
         return [plain(v, what, depth + 1) for v in value]
     raise _unfit(f"{what} is a {type(value).__name__}, which has no plain form")
+
+
+def _json_float(value: float) -> float:
+    """JSON by repr keeps every float bit for bit, but knows one NaN only."""
+    return math.nan if math.isnan(value) else float(value)
 
 
 def to_json(value: object, what: str) -> str:
@@ -97,7 +103,10 @@ def inputs(given: Inputs) -> Inputs:
         equations=text(given.equations, "the equations"),
         latex=text(given.latex, "the LaTeX text"),
         regulator=text(given.regulator, "the regulator"),
-        regulator_parameters=_reals(given.regulator_parameters, "the regulator parameters"),
+        regulator_parameters={
+            name: _json_float(value)
+            for name, value in _reals(given.regulator_parameters, "the regulator parameters").items()
+        },
         settings=plain(given.settings, "the settings"),
         signature=text(given.signature, "the signature"),
     )

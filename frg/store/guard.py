@@ -87,7 +87,7 @@ def translated(path: str | os.PathLike[str], done: str = "read") -> Iterator[Non
         yield
     except FrgError as error:
         raise (error.at(Place(source=str(path))) if isinstance(error, StoreError) else error) from None
-    except Exception as error:  # noqa: BLE001  (h5py's errors have no common base)
+    except Exception as error:  # the errors of h5py have no common base
         detail = " ".join(str(error).split())[:200]
         raise StoreError(
             f"the run file cannot be {done}: {type(error).__name__}: {detail}",

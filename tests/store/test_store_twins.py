@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import itertools
+import math
 from pathlib import Path
 
 import numpy as np
@@ -20,6 +21,7 @@ from frg.store.memory import MemoryStore
 TEXT = st.text(st.characters(exclude_characters="\0", exclude_categories=("Cs",)), max_size=12)
 INT = st.integers(-(2**62), 2**62)
 REAL = st.floats(width=64)
+JSON_REAL = REAL.map(lambda x: math.nan if math.isnan(x) else x)  # JSON knows one NaN only
 COUNTER = itertools.count()
 
 
@@ -117,7 +119,7 @@ VERDICTS = st.builds(
     growth=st.none() | growths(),
 )
 SETTING = st.recursive(
-    st.none() | st.booleans() | INT | REAL | TEXT,
+    st.none() | st.booleans() | INT | JSON_REAL | TEXT,
     lambda inner: st.lists(inner, max_size=2) | st.dictionaries(TEXT, inner, max_size=2),
     max_leaves=4,
 )
@@ -129,7 +131,7 @@ INPUTS = st.builds(
     equations=TEXT,
     latex=TEXT,
     regulator=TEXT,
-    regulator_parameters=st.dictionaries(TEXT, REAL, max_size=2),
+    regulator_parameters=st.dictionaries(TEXT, JSON_REAL, max_size=2),
     settings=st.dictionaries(TEXT, SETTING, max_size=2),
     signature=TEXT,
 )
@@ -252,3 +254,13 @@ def test_two_runs_can_be_open_at_once(tmp_path: Path, samples) -> None:
             one.append_step(samples.step(n))
             two.append_step(samples.step(n))
         assert differences(one.read(), two.read()) == ()
+
+
+def test_both_stores_hold_the_same_nan_in_settings(tmp_path: Path, samples) -> None:
+    odd = float(np.array([0xFFF8000000000123], dtype=np.uint64).view(np.float64)[0])
+    inputs = samples.inputs(settings={"x": odd, "y": [odd]}, regulator_parameters={"alpha": odd})
+    with (
+        MemoryStore.create(inputs, **samples.provenance) as memory,
+        HDF5Store.create(tmp_path / "run.h5", inputs, **samples.provenance) as hdf5,
+    ):
+        assert differences(memory.read(), hdf5.read()) == ()
