@@ -40,7 +40,8 @@ class FixedPoint:
     `kind` is "gaussian", "physical" or "spurious" (a regulated propagator is not positive there, or
     the truncation's own artefact as told in `notes`). `residual` is max |beta| re-measured after the
     search; `condition` is the condition number of the scaled Jacobian. `certified` is None when
-    no proof was asked for."""
+    no proof was asked for. `landmarks` are derived numbers under plain names (for example the position of a minimum, the
+    slope of the potential at zero, the size of a grid's box)."""
 
     label: str
     kind: str
@@ -58,6 +59,7 @@ class FixedPoint:
     certified: bool | None = None
     notes: tuple[str, ...] = ()
     profile: Profile | None = None
+    landmarks: dict[str, float] = field(default_factory=dict)
 
     @property
     def gaussian(self) -> bool:

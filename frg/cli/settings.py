@@ -35,10 +35,10 @@ def search_settings(*, thorough: bool, single: bool = False) -> SearchSettings:
     )
 
 
-def study_settings(*, thorough: bool) -> StudySettings:
-    """Settings of `converge`."""
+def study_settings(*, thorough: bool, single: bool = False) -> StudySettings:
+    """Settings of `converge` and, with `single`, of `solve`."""
     return StudySettings(
-        search=search_settings(thorough=thorough),
+        search=search_settings(thorough=thorough, single=single),
         tracking=TrackingSettings(reach=0.7, shortest=2, most=8),
         verdict=VerdictSettings(settled=3, sinking=0.5, runaway=0.2, exponents=4),
     )

@@ -78,16 +78,10 @@ def _grid(equations: FlowEquations) -> ChebyshevGrid:
 
 
 def degree_table(function: RunningFunction, equations: FlowEquations, orders: tuple[int, ...]) -> dict[int, int]:
-    """Highest power kept, by value of the order symbol; {0: degree} where the order is a plain number."""
-    import sympy
+    """Highest power kept, by value of the order symbol; {0: degree} where a truncation has no order axis.
 
-    values = dict(equations.truncation.parameters)
-    symbol = sympy.Symbol(equations.truncation.study.order)
-    assert function.order is not None
-    if not orders or symbol not in function.order.free_symbols:
-        degree = int(function.order.subs(values))
-        return dict.fromkeys(orders, degree) if orders else {0: degree}
-    return {n: int(function.order.subs(symbol, n).subs(values)) for n in orders}
+    Raises InputError where an order leaves no coupling."""
+    return {n: equations.truncation.order_of(function, n) or 0 for n in orders or (0,)}
 
 
 def _taylor(equations: FlowEquations, orders: tuple[int, ...]) -> Taylor:
@@ -114,7 +108,7 @@ def _taylor(equations: FlowEquations, orders: tuple[int, ...]) -> Taylor:
     )
     about = None
     if not moving:
-        value = float(abouts[0].subs(equations.truncation.parameters))  # type: ignore[union-attr]
+        value = equations.truncation.numeric(abouts[0])  # type: ignore[arg-type]
         about = (value,) * len(flows[0].coordinates)
     return Taylor(
         coordinates=flows[0].coordinates, functions=functions, about=about,
@@ -227,8 +221,8 @@ def loop_rule(equations: FlowEquations):  # type: ignore[no-untyped-def]
 
 
 def dimension_value(equations: FlowEquations) -> float:
-    truncation = equations.truncation
-    return float(truncation.dimension.subs(truncation.parameters))
+    """The dimension of space in force; NaN for typed-in flows that leave it out."""
+    return equations.truncation.numeric(equations.truncation.dimension)
 
 
 def flow_arguments(flow: Flow, *, box: float = 1.0, scale: np.ndarray | None = None) -> Arguments:
@@ -236,7 +230,7 @@ def flow_arguments(flow: Flow, *, box: float = 1.0, scale: np.ndarray | None = N
     jnp = load().numpy
     equations = flow.equations
     d = dimension_value(equations)
-    parameters = {k: float(v) for k, v in equations.truncation.parameters.items()}
+    parameters = {k: equations.truncation.numeric(v) for k, v in equations.truncation.parameters.items()}
     # v_d = 1/(2^(d+1) pi^(d/2) Gamma(d/2)), Berges, Tetradis, Wetterich, Phys. Rept. 363 (2002) 223
     parameters["vd"] = 1 / (2 ** (d + 1) * math.pi ** (d / 2) * math.gamma(d / 2))
     found = loop_rule(equations)
@@ -275,7 +269,8 @@ def natural_units(flow: Flow, args: Arguments) -> tuple[float, float]:
 
     response = abs(float(jax.jacfwd(respond)(jnp.zeros(()))))
     unit = 4 * args.parameters["vd"] / dimension_value(equations)
-    size = max(response, unit) if math.isfinite(response) else unit
+    sizes = [x for x in (response, unit) if math.isfinite(x) and x > 0]
+    size = max(sizes, default=1.0)
     return size, size
 
 

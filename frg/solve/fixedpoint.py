@@ -221,7 +221,7 @@ def domain_points(flow: Flow, g: np.ndarray, args: Arguments, unit: float) -> np
 def build_record(
     examiner: Examiner, measured: Measured, judgement: Judgement, args: Arguments, *,
     label: str, order: int | None, keep: np.ndarray | None = None, odd: np.ndarray | None = None,
-    notes: tuple[str, ...] = (), spurious: str | None = None,
+    notes: tuple[str, ...] = (), spurious: str | None = None, landmarks: dict[str, float] | None = None,
 ) -> FixedPoint:
     """The record of a measured root. `keep` selects the directions that are not artefacts of a grid."""
     flow, found = examiner.flow, measured.spectrum
@@ -245,6 +245,7 @@ def build_record(
         theta=theta, right=right, left=left, theta_odd=odd, residual=measured.residual,
         condition=found.condition, relevant=relevant, marginal=marginal, notes=tuple(reasons),
         profile=examiner.profile(measured, right, _profile_reach(flow, measured.g, args, unit), args),
+        landmarks=landmarks or {},
     )
 
 

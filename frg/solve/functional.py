@@ -11,7 +11,7 @@ from typing import Any
 import numpy as np
 
 from frg.derive.equations import FlowEquations
-from frg.evaluate.build import build_flow, flow_arguments, natural_units
+from frg.evaluate.build import build_flow, dimension_value, flow_arguments, natural_units
 from frg.evaluate.flow import Arguments, Flow
 from frg.evaluate.grid import ChebyshevGrid
 from frg.evaluate.jaxload import load
@@ -82,7 +82,7 @@ class GridProblem:
         return c / np.asarray(args.scale), args
 
     def _extended(self, shot: Shot, x: np.ndarray) -> np.ndarray:
-        d = float(self.equations.truncation.dimension.subs(self.equations.truncation.parameters))
+        d = dimension_value(self.equations)
         power = d / (d - 2) if d > 2 else 6.0
         inner = np.interp(x, np.concatenate([[0.0], shot.x]),
                           np.concatenate([[shot.u[0] - shot.sigma * shot.x[0]], shot.u]))
@@ -129,7 +129,7 @@ class GridProblem:
         position = 2 * inside / old_box - 1
         values = np.polynomial.chebyshev.chebval(position, g[:count])
         slope = np.polynomial.chebyshev.chebval(1.0, np.polynomial.chebyshev.chebder(g[:count])) * 2 / old_box
-        d = float(self.equations.truncation.dimension.subs(self.equations.truncation.parameters))
+        d = dimension_value(self.equations)
         power = d / (d - 2) if d > 2 else 6.0
         values = values + slope * old_box / power * (np.maximum(x / old_box, 1.0) ** power - 1)
         c = np.concatenate([self.grid.coefficients_of(values), g[count:]])

@@ -9,7 +9,7 @@ import numpy as np
 
 from frg.derive.equations import FlowEquations
 from frg.errors import NotYet, Place
-from frg.evaluate.build import flow_arguments, loop_rule, natural_units
+from frg.evaluate.build import dimension_value, flow_arguments, loop_rule, natural_units
 from frg.evaluate.jaxload import load
 from frg.records import FixedPoint
 from frg.solve.fixedpoint import Examiner, Measured, build_record
@@ -152,17 +152,16 @@ class GridSearch(AbstractSearch):
         tolerance = self.settings.grid_agreement
         theta, second = measured.spectrum.theta, other.spectrum.theta
         keep = agreeing(theta, second, tolerance) & ~self._constant_direction(measured)
-        keep &= theta.real < dimension(self.equations) + 1e-6
-        keep = _leading(keep, theta, dimension(self.equations))
+        keep &= theta.real < dimension_value(self.equations) + 1e-6
+        keep = _leading(keep, theta, dimension_value(self.equations))
         odd = self.examiner.odd_exponents(measured.g, None, solution.args, self._unit())
         odd_again = self.second_examiner.odd_exponents(other.g, None, again.args, self._unit())
         odd = odd[agreeing(odd, odd_again, tolerance)]
         error = np.array([np.min(np.abs(second - t)) for t in theta[keep]])
         notes = [f"box and resolution error of theta, by direction: {', '.join(f'{e:.1e}' for e in error[:6])}"]
-        notes += self._landmarks(solution, measured)
         return build_record(
             self.examiner, measured, judgement, solution.args, label="", order=None, keep=keep, odd=odd,
-            notes=tuple(notes),
+            notes=tuple(notes), landmarks=self._landmarks(solution, measured),
         )
 
     def _constant_direction(self, measured: Measured) -> np.ndarray:
@@ -170,14 +169,16 @@ class GridSearch(AbstractSearch):
         vectors = np.abs(measured.spectrum.right / np.linalg.norm(measured.spectrum.right, axis=0))
         return vectors[0] > 1 - 1e-6
 
-    def _landmarks(self, solution: GridSolution, measured: Measured) -> list[str]:
+    def _landmarks(self, solution: GridSolution, measured: Measured) -> dict[str, float]:
         block, args, name = solution.flow.block, solution.args, self.equations.functions[0].name
         own = measured.g[: block.size]  # type: ignore[union-attr]
         at_zero = float(block.jets_at(own, load().numpy.zeros(()), name, (1,), args.box))  # type: ignore[union-attr]
-        found = [f"box [0, {float(args.box):.6g}]", f"slope at zero {at_zero:.15g}"]
+        found = {"box": float(args.box), f"{name}1 at zero": at_zero}
         minimum = refined_minimum(solution, measured.g, name)
         if minimum is not None:
-            found.append(f"outermost minimum at {minimum:.15g}")
+            found[f"{name}_min"] = minimum
+            if solution.flow.minimum_function:
+                found["minimum for eta"] = float(measured.g[-1])
         return found
 
 
@@ -195,10 +196,6 @@ def refined_minimum(solution: GridSolution, g: np.ndarray, name: str) -> float |
     values = np.array([slope(v) for v in x])
     turns = np.flatnonzero((values[:-1] < 0) & (values[1:] >= 0))
     return float(brentq(slope, x[turns[-1]], x[turns[-1] + 1], xtol=1e-15)) if len(turns) else None
-
-
-def dimension(equations: FlowEquations) -> float:
-    return float(equations.truncation.dimension.subs(equations.truncation.parameters))
 
 
 def _leading(keep: np.ndarray, theta: np.ndarray, d: float) -> np.ndarray:

@@ -19,7 +19,7 @@ import numpy as np
 
 from frg.derive import symbols
 from frg.derive.equations import FlowEquations
-from frg.evaluate.build import build_flow, flow_arguments, natural_units
+from frg.evaluate.build import build_flow, dimension_value, flow_arguments, natural_units
 from frg.evaluate.flow import Arguments, Flow, integrate
 from frg.evaluate.jaxload import load
 from frg.evaluate.series import series_arithmetic

@@ -16,7 +16,7 @@ def canonical_exponents(equations: FlowEquations, flow: Flow, order: int | None)
     truncation = equations.truncation
     if truncation.lagrangian is None:
         return None
-    d = float(truncation.dimension.subs(truncation.parameters))
+    d = truncation.numeric(truncation.dimension)
     block = flow.block
     if isinstance(block, Taylor):
         fields = np.array([2.0 * block.algebra.degrees[k] for _, k in block.layout])
