@@ -27,7 +27,7 @@ def search_settings(*, thorough: bool, single: bool = False) -> SearchSettings:
         ladder=LadderScan(low=-1.0, high=4.0, points=6144 if thorough else 1536, halvings=44),
         shooting=ShootingScan(
             low=-0.97, high=1.0, points=1536 if thorough else 768,
-            reaches=(2.5, 3.0, 4.0, 5.0, 6.5, 8.0), steps=800, rounds=11,
+            reaches=(2.5, 3.0, 4.0, 5.0, 6.5, 8.0), steps=500, rounds=8,
         ),
         grid=GridNewton(iterations=40, halvings=8, step=1e-9),
         grid_agreement=1e-5,

@@ -39,7 +39,8 @@ def derive_flow(
 
     `close_loops` does the loops of the flat shape with alpha = 1 in closed form (exact); set it to False
     to keep integrands, for example to differentiate by alpha. Raises NotYet or InputError."""
-    book = LoopBook(regulator, truncation.dimension, close=close_loops)
+    value = truncation.numeric(truncation.dimension)
+    book = LoopBook(regulator, truncation.dimension, close=close_loops, dimension_value=value)
     if truncation.flow is not None:
         return typed_flow(truncation, book)
     return _flat_flow(truncation, book)

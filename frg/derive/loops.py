@@ -21,8 +21,11 @@ class LoopBook:
     105007, hep-th/0103195). For the sharp cutoff the closed forms
     l_0(w) = -ln(1+w), l_n(w) = 1/(1+w)^n are used; they have no integrand."""
 
-    def __init__(self, regulator: AbstractRegulator, dimension: sympy.Expr, *, close: bool):
+    def __init__(
+        self, regulator: AbstractRegulator, dimension: sympy.Expr, *, close: bool, dimension_value: float
+    ):
         self.regulator = regulator
+        self.dimension_value = dimension_value
         self.dimension = dimension
         self.close = close and regulator.name == "flat" and regulator.parameters.get("alpha") == 1.0
         self.loops: list[Loop] = []
@@ -58,11 +61,30 @@ class LoopBook:
                     remedy="drop the third argument of l(n, w, eta), or use another regulator",
                 )
             return -sympy.log(1 + w) if n == 0 else (1 + w) ** (-n)
+        if self.closed_mass and eta == 0:
+            return self._mass_threshold(n, w)
         weight = sympy.Rational(max(n, 1), 2)
         propagator = symbols.inverse_propagator() + w
         return self.integral(
             weight * symbols.regulator_insertion(eta) / propagator ** (n + 1), decay=n + 1
         )
+
+    @property
+    def closed_mass(self) -> bool:
+        """True for the constant shape where its loops converge (l_0 up to a constant) and are powers."""
+        if self.regulator.name != "mass" or not self.dimension_value < 4:
+            return False
+        return self.dimension_value not in (0.0, 2.0)
+
+    def _mass_threshold(self, n: int, w: sympy.Expr) -> sympy.Expr:
+        """l_n^d(w) = max(n,1) alpha B(d/2, n+1-d/2) (alpha+w)^(d/2-n-1) for s = alpha, by the beta integral. For
+        n = 0 the part independent of w diverges and is dropped, which leaves the analytic continuation in d;
+        at the boundary w = -alpha, where fixed points of this regulator sit, no quadrature converges."""
+        import sympy
+
+        d, alpha = self.dimension, sympy.nsimplify(self.regulator.parameters["alpha"])
+        beta = sympy.gamma(d / 2) * sympy.gamma(n + 1 - d / 2) / sympy.factorial(n)
+        return max(n, 1) * alpha * beta * (alpha + w) ** (d / 2 - n - 1)
 
     def log_determinant(
         self, blocks: list[tuple[sympy.Expr, sympy.Expr]], mass: sympy.Symbol, eta: sympy.Expr
@@ -73,6 +95,8 @@ class LoopBook:
 
         if self.regulator.closed_form:
             return sympy.Add(*(-2 * m * sympy.log(det.subs(mass, 1)) for m, det in blocks))
+        if self.closed_mass and eta == 0 and all(sympy.degree(det, mass) == 1 for _, det in blocks):
+            return sympy.Add(*(2 * m * self._mass_threshold(0, det.subs(mass, 0)) for m, det in blocks))
         trace = sympy.Add(*(m * sympy.diff(det, mass) / det for m, det in blocks))
         trace = trace.subs(mass, symbols.inverse_propagator())
         return self.integral(symbols.regulator_insertion(eta) * trace, decay=1)

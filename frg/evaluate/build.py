@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from functools import lru_cache
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -20,6 +21,7 @@ from frg.evaluate.series import series_arithmetic
 from frg.evaluate.taylor import Taylor, TaylorFunction
 from frg.language.program import compile_expressions
 from frg.language.truncation import RunningFunction
+from frg.regulator.base import ACCURACY, AbstractRegulator, LoopRule
 
 if TYPE_CHECKING:
     import sympy
@@ -211,13 +213,18 @@ def _rule_subtracts(equations: FlowEquations) -> bool:
     return rule is not None and rule.subtract
 
 
-def loop_rule(equations: FlowEquations):  # type: ignore[no-untyped-def]
+def loop_rule(equations: FlowEquations, accuracy: float = ACCURACY) -> LoopRule | None:
     """The regulator's LoopRule for the loops that are left to be done numerically, or None."""
     if not equations.loops:
         return None
-    return equations.regulator.rule(
-        dimension_value(equations), derivatives=2, decay=min(loop.decay for loop in equations.loops)
-    )
+    decay = min(loop.decay for loop in equations.loops)
+    return _rule(equations.regulator, dimension_value(equations), decay, accuracy)
+
+
+@lru_cache(maxsize=32)
+def _rule(regulator: AbstractRegulator, dimension: float, decay: int, accuracy: float) -> LoopRule:
+    """Regulators are frozen values, so that their rules can be kept: a search asks for them again and again."""
+    return regulator.rule(dimension, derivatives=2, decay=decay, accuracy=accuracy)
 
 
 def dimension_value(equations: FlowEquations) -> float:
@@ -225,7 +232,9 @@ def dimension_value(equations: FlowEquations) -> float:
     return equations.truncation.numeric(equations.truncation.dimension)
 
 
-def flow_arguments(flow: Flow, *, box: float = 1.0, scale: np.ndarray | None = None) -> Arguments:
+def flow_arguments(
+    flow: Flow, *, box: float = 1.0, scale: np.ndarray | None = None, accuracy: float = ACCURACY
+) -> Arguments:
     """Numerical values of everything but the unknowns; `scale` defaults to the natural units."""
     jnp = load().numpy
     equations = flow.equations
@@ -233,7 +242,7 @@ def flow_arguments(flow: Flow, *, box: float = 1.0, scale: np.ndarray | None = N
     parameters = {k: equations.truncation.numeric(v) for k, v in equations.truncation.parameters.items()}
     # v_d = 1/(2^(d+1) pi^(d/2) Gamma(d/2)), Berges, Tetradis, Wetterich, Phys. Rept. 363 (2002) 223
     parameters["vd"] = 1 / (2 ** (d + 1) * math.pi ** (d / 2) * math.gamma(d / 2))
-    found = loop_rule(equations)
+    found = loop_rule(equations, accuracy)
     rule = None
     if found is not None:
         rule = Rule(

@@ -12,6 +12,9 @@ from dataclasses import dataclass
 import numpy as np
 
 
+ACCURACY = 2e-13  # relative error wanted of loop integrals
+
+
 @dataclass(frozen=True, kw_only=True, eq=False)
 class LoopRule:
     """A rule for  integral_0^inf dy y^(d/2-1) F(y, s, s', s'', ...),  weights y^(d/2-1) included.
@@ -49,8 +52,11 @@ class AbstractRegulator(abc.ABC):
         """Parameter values by name, in a fixed order."""
 
     @abc.abstractmethod
-    def rule(self, dimension: float, *, derivatives: int = 2, decay: int = 1) -> LoopRule:
-        """Quadrature for loops in `dimension` with s-derivatives up to `derivatives`.
+    def rule(
+        self, dimension: float, *, derivatives: int = 2, decay: int = 1, accuracy: float = ACCURACY
+    ) -> LoopRule:
+        """Quadrature for loops in `dimension` with s-derivatives up to `derivatives`, with as few nodes as give
+        the relative `accuracy` on test integrands (every node costs in the compiled flow).
 
         `decay` is the least power of the propagator 1/(P + w) in the integrand (1 for the flow of a potential).
         Raises InputError where the loop diverges or s is not smooth enough for the derivatives asked for."""

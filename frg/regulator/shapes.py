@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING, ClassVar
 import numpy as np
 
 from frg.errors import InputError, Place
-from frg.regulator.base import AbstractRegulator, LoopRule
+from frg.regulator.base import ACCURACY, AbstractRegulator, LoopRule
 from frg.regulator.quadrature import (
     algebraic_rule,
     compact_rule,
@@ -69,17 +69,20 @@ class Theta(_Shape):
         y, alpha = sympy.symbols("y alpha")
         return alpha * (1 - y) ** sympy.nsimplify(self.power)
 
-    def rule(self, dimension: float, *, derivatives: int = 2, decay: int = 1) -> LoopRule:
+    def rule(
+        self, dimension: float, *, derivatives: int = 2, decay: int = 1, accuracy: float = ACCURACY
+    ) -> LoopRule:
         _positive_dimension(dimension)
         if self.power == 1.0:
-            return Flat(alpha=self.alpha).rule(dimension, derivatives=derivatives, decay=decay)
+            return Flat(alpha=self.alpha).rule(dimension, derivatives=derivatives, decay=decay, accuracy=accuracy)
         if derivatives > self.power:
             raise InputError(
                 f"theta with power {self.power:g} has no bounded derivative of order {derivatives} at its edge",
                 remedy=f"use a power of at least {derivatives}, or a smooth shape",
             )
         table = self._table(derivatives)
-        return compact_rule(table, dimension, 40, None, lowest_propagator(table, 1 - 1e-12))
+        count = 40 if accuracy < 1e-8 else 12
+        return compact_rule(table, dimension, count, None, lowest_propagator(table, 1 - 1e-12))
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -100,7 +103,9 @@ class Flat(_Shape):
         y, alpha = sympy.symbols("y alpha")
         return alpha * (1 - y)
 
-    def rule(self, dimension: float, *, derivatives: int = 2, decay: int = 1) -> LoopRule:
+    def rule(
+        self, dimension: float, *, derivatives: int = 2, decay: int = 1, accuracy: float = ACCURACY
+    ) -> LoopRule:
         _positive_dimension(dimension)
         if derivatives > 2:
             raise InputError(
@@ -108,7 +113,7 @@ class Flat(_Shape):
                 remedy="use a smooth shape, for example exponential",
             )
         # two nodes are exact where P is constant (alpha = 1): the integrand is then at most cubic in y
-        count = 2 if self.alpha == 1.0 else 40
+        count = 2 if self.alpha == 1.0 else (40 if accuracy < 1e-8 else 12)
         return compact_rule(self._table(derivatives), dimension, count, -self.alpha, min(self.alpha, 1.0))
 
 
@@ -131,8 +136,10 @@ class Exponential(_Shape):
         y, alpha, s = sympy.symbols("y alpha s")
         return alpha * y / (sympy.exp(s * y) - 1)
 
-    def rule(self, dimension: float, *, derivatives: int = 2, decay: int = 1) -> LoopRule:
-        return _decaying(self._table(derivatives), dimension)
+    def rule(
+        self, dimension: float, *, derivatives: int = 2, decay: int = 1, accuracy: float = ACCURACY
+    ) -> LoopRule:
+        return _decaying(self._table(derivatives), dimension, accuracy)
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -152,8 +159,10 @@ class Gaussian(_Shape):
         y, alpha = sympy.symbols("y alpha")
         return alpha * sympy.exp(-y)
 
-    def rule(self, dimension: float, *, derivatives: int = 2, decay: int = 1) -> LoopRule:
-        return _decaying(self._table(derivatives), dimension)
+    def rule(
+        self, dimension: float, *, derivatives: int = 2, decay: int = 1, accuracy: float = ACCURACY
+    ) -> LoopRule:
+        return _decaying(self._table(derivatives), dimension, accuracy)
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -175,10 +184,12 @@ class Power(_Shape):
         y, alpha, b = sympy.symbols("y alpha b")
         return alpha * y ** (-b)
 
-    def rule(self, dimension: float, *, derivatives: int = 2, decay: int = 1) -> LoopRule:
+    def rule(
+        self, dimension: float, *, derivatives: int = 2, decay: int = 1, accuracy: float = ACCURACY
+    ) -> LoopRule:
         # min over y of y + alpha y^-b, at y = (alpha b)^(1/(1+b))
         y = (self.alpha * self.b) ** (1 / (1 + self.b))
-        return _algebraic(self, self._table(derivatives), dimension, self.b, decay, y + self.alpha * y ** (-self.b))
+        return _algebraic(self, self._table(derivatives), dimension, self.b, decay, accuracy, y + self.alpha * y ** (-self.b))
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -198,8 +209,10 @@ class Mass(_Shape):
 
         return sympy.Symbol("alpha")
 
-    def rule(self, dimension: float, *, derivatives: int = 2, decay: int = 1) -> LoopRule:
-        return _algebraic(self, self._table(derivatives), dimension, 0.0, decay, self.alpha)
+    def rule(
+        self, dimension: float, *, derivatives: int = 2, decay: int = 1, accuracy: float = ACCURACY
+    ) -> LoopRule:
+        return _algebraic(self, self._table(derivatives), dimension, 0.0, decay, accuracy, self.alpha)
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -213,7 +226,9 @@ class Sharp(_Shape):
     def closed_form(self) -> bool:
         return True
 
-    def rule(self, dimension: float, *, derivatives: int = 2, decay: int = 1) -> LoopRule:
+    def rule(
+        self, dimension: float, *, derivatives: int = 2, decay: int = 1, accuracy: float = ACCURACY
+    ) -> LoopRule:
         raise InputError(
             "the sharp cutoff has no loop integrand, only closed forms for momentum-independent vertices",
             remedy="use it without wave-function renormalisation, or choose another regulator",
@@ -255,8 +270,10 @@ class Custom(_Shape):
     def shape(self) -> sympy.Expr:
         return self.expression
 
-    def rule(self, dimension: float, *, derivatives: int = 2, decay: int = 1) -> LoopRule:
-        return _decaying(self._table(derivatives), dimension)
+    def rule(
+        self, dimension: float, *, derivatives: int = 2, decay: int = 1, accuracy: float = ACCURACY
+    ) -> LoopRule:
+        return _decaying(self._table(derivatives), dimension, accuracy)
 
 
 def _unfit(text: str, why: str) -> InputError:
@@ -267,22 +284,24 @@ def _unfit(text: str, why: str) -> InputError:
     )
 
 
-def _decaying(table, dimension: float) -> LoopRule:  # type: ignore[no-untyped-def]
+def _decaying(table, dimension: float, accuracy: float) -> LoopRule:  # type: ignore[no-untyped-def]
     _positive_dimension(dimension)
     lowest = lowest_propagator(table, 12.0)
-    for nodes in PANEL_NODES:
-        rule = decaying_rule(table, dimension, nodes, lowest)
-        if rule.error < WANTED:
-            break
-    return rule
+    for nodes in PANEL_NODES[:-1]:
+        try:
+            rule = decaying_rule(table, dimension, nodes, lowest)
+        except InputError:
+            continue  # too coarse to tell anything; only the finest rule decides that a loop does not converge
+        if rule.error < accuracy:
+            return rule
+    return decaying_rule(table, dimension, PANEL_NODES[-1], lowest)
 
 
-PANEL_NODES = (20, 28, 40)  # a panel; every node costs in the compiled flow, so the least that suffices is taken
-WANTED = 2e-13  # relative error of a loop integral
+PANEL_NODES = (5, 8, 14, 20, 28, 40)  # a panel; the least that suffices is taken
 
 
 def _algebraic(  # type: ignore[no-untyped-def]
-    regulator: _Shape, table, dimension: float, b: float, decay: int, lowest: float
+    regulator: _Shape, table, dimension: float, b: float, decay: int, accuracy: float, lowest: float
 ) -> LoopRule:
     _positive_dimension(dimension)
     fall, subtract = b + decay, False
@@ -294,7 +313,7 @@ def _algebraic(  # type: ignore[no-untyped-def]
             f"the loop diverges with the regulator {regulator.name} in d = {dimension:g}",
             remedy="lower the dimension, or choose a regulator that decays faster",
         )
-    return algebraic_rule(table, dimension, fall, 48, subtract, lowest, decay)
+    return algebraic_rule(table, dimension, fall, 48 if accuracy < 1e-8 else 12, subtract, lowest, decay)
 
 
 def _positive_dimension(dimension: float) -> None:

@@ -18,6 +18,7 @@ from frg.evaluate.taylor import Taylor
 from frg.records import FixedPoint, Profile
 from frg.solve.spectrum import Spectrum, count_directions, sort_order, spectrum
 
+AT_BOUNDARY = 1e-6  # fixed points may sit on the boundary of the domain (the mass regulator's do)
 PROFILE_POINTS = 121
 PROFILE_DIRECTIONS = 4
 
@@ -99,7 +100,7 @@ class Examiner:
             J, b = J[np.ix_(active, active)], b[active]
             if not (np.isfinite(J).all() and np.isfinite(b).all()):
                 break
-            p = np.linalg.lstsq(J, -b, rcond=1e-15)[0]
+            p = np.linalg.lstsq(J, -b, rcond=1e-13)[0]
             trial = c.copy()
             trial[active] += p
             value = np.asarray(self._system(trial, args)[0])[active]
@@ -110,7 +111,7 @@ class Examiner:
         b, J, M = (np.asarray(v) for v in self._system(c, args))
         J, M = J[np.ix_(active, active)], M[np.ix_(active, active)]
         algebraic = self.flow.algebraic[active]
-        found = spectrum(J, M, scale[active], algebraic)
+        found = spectrum(J, M, scale[active], algebraic, self._columns(c)[active])
         beta = _beta(b[active], M, algebraic)
         return Measured(g=np.where(active, c * scale, 0.0), active=active, scale=scale, beta=beta,
                         spectrum=found, step=step)
@@ -130,6 +131,17 @@ class Examiner:
         factor = float(np.exp(-np.clip(rate, -5, 5)))
         stretched[: block.size] = stretched_scale(block, scale[: block.size], factor)
         return stretched
+
+    def _columns(self, c: np.ndarray) -> np.ndarray:
+        """Sizes expected in eigenvectors: those of the solution's own Chebyshev coefficients on a grid."""
+        block, columns = self.flow.block, np.ones(len(c))
+        if isinstance(block, ChebyshevGrid):
+            for f in range(len(block.functions)):
+                own = np.abs(c[f * block.points : (f + 1) * block.points])
+                envelope = np.maximum.accumulate(own[::-1])[::-1]
+                if block.points > 1 and envelope[1] > 1e-6 * envelope[0]:
+                    columns[f * block.points : (f + 1) * block.points] = np.maximum(envelope / envelope[0], 1e-13)
+        return columns
 
     def masses(self, g: np.ndarray, x: np.ndarray, args: Arguments) -> np.ndarray:
         """(m, k) masses of the regulated propagators at the points x."""
@@ -273,7 +285,7 @@ def _outside_domain(examiner: Examiner, measured: Measured, args: Arguments, uni
         masses = np.asarray(masses_at_centre(flow, g, args))
     else:
         masses = examiner.masses(g, domain_points(flow, g, args, unit), args)
-    if not np.isfinite(masses).all() or np.min(masses) <= -examiner.lowest:
+    if not np.isfinite(masses).all() or np.min(masses) < -examiner.lowest * (1 + AT_BOUNDARY):
         return (
             f"a regulated propagator is not positive: the smallest mass is {np.min(masses):.6g}, "
             f"the bound is {-examiner.lowest:.6g}"

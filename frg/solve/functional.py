@@ -38,6 +38,10 @@ class GridSolution:
     step: float
 
 
+WITHOUT_MINIMUM = 12.0  # the scale on which a Gaussian spectrum becomes visible, in natural units of the coordinate
+EXACT = 1e-14  # a residual at round-off needs no further step; beside a marginal direction the step has no meaning
+
+
 @dataclass(frozen=True, kw_only=True, eq=False)
 class GridProblem:
     """The compiled residual and Jacobian of a flow on a grid with a given number of points."""
@@ -69,11 +73,11 @@ class GridProblem:
 
     def start(self, shot: Shot, upto: float) -> tuple[np.ndarray, Arguments]:
         """Scaled unknowns and arguments for a candidate: the followed part, then its power-law growth
-        x^(d/(d-2)), on a box of `upto` times the outermost minimum (natural units without a minimum)."""
+        x^(d/(d-2)), on a box of `upto` times the outermost minimum, or times WITHOUT_MINIMUM natural units."""
         args = flow_arguments(self.flow)
         size, _ = natural_units(self.flow, args)
         minimum = outermost_minimum(shot.x, shot.slope)
-        box = upto * (minimum if minimum is not None else size)
+        box = upto * (minimum if minimum is not None else WITHOUT_MINIMUM * size)
         args = flow_arguments(self.flow, box=box)
         values = self._extended(shot, np.asarray(self.grid.coordinate_values(box)))
         c = self.grid.coefficients_of(values)
@@ -84,22 +88,27 @@ class GridProblem:
     def _extended(self, shot: Shot, x: np.ndarray) -> np.ndarray:
         d = dimension_value(self.equations)
         power = d / (d - 2) if d > 2 else 6.0
-        inner = np.interp(x, np.concatenate([[0.0], shot.x]),
-                          np.concatenate([[shot.u[0] - shot.sigma * shot.x[0]], shot.u]))
+        from scipy.interpolate import CubicHermiteSpline
+
+        known = np.concatenate([[0.0], shot.x])
+        values = np.concatenate([[shot.u[0] - shot.sigma * shot.x[0]], shot.u])
+        inner = CubicHermiteSpline(known, values, np.concatenate([[shot.sigma], shot.slope]))(x)
         end, u_end, slope_end = shot.x[-1], shot.u[-1], shot.slope[-1]
         growth = slope_end * end / power
         return np.where(x <= end, inner, u_end + growth * ((x / end) ** power - 1))
 
     def solve(self, c: np.ndarray, args: Arguments, newton: GridNewton) -> GridSolution | None:
         """Damped Newton; None where it leaves the finite numbers or does not settle."""
-        compiled, relative = self.compiled, np.inf
+        compiled, relative = self.compiled, float("inf")
         for _ in range(newton.iterations):
             b, J, _ = (np.asarray(v) for v in compiled(c, args))
             if not (np.isfinite(b).all() and np.isfinite(J).all()):
                 return None
+            if np.max(np.abs(b)) < EXACT:
+                return GridSolution(flow=self.flow, args=args, unknowns=c, step=min(relative, newton.step))
             weight = 1 / np.maximum(np.abs(J).sum(axis=1), 1e-300)
             # least squares, because a marginal direction makes the Jacobian singular at a genuine fixed point
-            p = np.linalg.lstsq(J * weight[:, None], -b * weight, rcond=1e-15)[0]
+            p = np.linalg.lstsq(J * weight[:, None], -b * weight, rcond=1e-13)[0]
             norm, taken = np.max(np.abs(b * weight)), None
             for halving in range(newton.halvings + 1):
                 trial = c + 0.5**halving * p
@@ -107,7 +116,7 @@ class GridProblem:
                 if np.isfinite(value).all() and (np.max(np.abs(value * weight)) < norm or halving == 0 and norm < 1e-13):
                     taken = trial
                     break
-            previous, relative = relative, float(np.max(np.abs(p)) / np.max(np.abs(c)))
+            previous, relative = relative, float(np.max(np.abs(p)) / max(float(np.max(np.abs(c))), 1e-300))
             if taken is None:
                 break
             c = taken

@@ -10,6 +10,7 @@ import numpy as np
 from frg.derive.equations import FlowEquations
 from frg.errors import NotYet, Place
 from frg.evaluate.build import dimension_value, flow_arguments, loop_rule, natural_units
+from frg.evaluate.grid import ChebyshevGrid
 from frg.evaluate.jaxload import load
 from frg.records import FixedPoint
 from frg.solve.fixedpoint import Examiner, Measured, build_record
@@ -17,6 +18,8 @@ from frg.solve.functional import GridProblem, GridSolution, agreeing
 from frg.solve.search import AbstractSearch, SearchSettings, Warm, lowest_of, ranked
 from frg.solve.shooting import Shooting, Shot, can_shoot, companion
 
+COARSE = 1e-4  # accuracy of loop integrals in the shooting scan
+COARSE_POINTS = 24  # of the grid that smoothes a start
 MORE_POINTS = 12  # of the second grid that cleans the spectrum
 WIDER_BOX = 1.25  # of the second grid, against the box of the first
 MOST_BRACKETS = 48  # of the shooting scan; more sign changes than this mean that the scan is not reliable
@@ -44,6 +47,10 @@ class GridSearch(AbstractSearch):
     @property
     def _declared(self):  # type: ignore[no-untyped-def]
         return self.equations.functions[0].declared.grid
+
+    @cached_property
+    def coarse(self) -> GridProblem:
+        return GridProblem(equations=self.equations, points=min(COARSE_POINTS, self._declared.points))
 
     @cached_property
     def second(self) -> GridProblem:
@@ -81,7 +88,8 @@ class GridSearch(AbstractSearch):
 
     def _candidates(self, notes: list[str]) -> list[Shot]:
         shooting = Shooting(equations=companion(self.equations))
-        args = flow_arguments(shooting.flow)
+        # candidates only: a coarse rule is enough, and the scan costs in proportion to its nodes
+        args = flow_arguments(shooting.flow, accuracy=COARSE)
         shots, dropped = shooting.scan(self.settings.shooting, args, self.lowest, MOST_BRACKETS)
         if dropped:
             notes.append(f"{dropped} sign changes of the shooting scan were not followed")
@@ -91,29 +99,39 @@ class GridSearch(AbstractSearch):
         return natural_units(self.problem.flow, flow_arguments(self.problem.flow))[0]
 
     def _constant(self) -> Shot:
-        """The Gaussian fixed point: a constant potential."""
+        """The Gaussian fixed point: the constant potential at which -d U balances the loops."""
+        flow = self.problem.flow
+        args = flow_arguments(flow, box=self._unit())
+        vacuum = float(np.asarray(flow.right_side(np.zeros(flow.size), args))[0])
         x = np.linspace(0.1, 6.0, 60) * self._unit()
-        return Shot(sigma=0.0, x=x, u=np.zeros(60), slope=np.zeros(60))
+        return Shot(sigma=0.0, x=x, u=np.full(60, vacuum / dimension_value(self.equations)), slope=np.zeros(60))
 
     def _simple(self) -> list[Shot]:
-        """Quartic potentials with a few minima and curvatures, in natural units."""
+        """Polynomial potentials with a few minima (natural units): quartic ones with several curvatures, and sextic
+        ones, u' = sigma (1 - (x/minimum)^2), down to the edge of the domain sigma = -min P."""
         unit = self._unit()
-        x = np.linspace(0.02, 6.0, 300) * unit
-        return [
+        x = np.linspace(0.02, 8.0, 400) * unit
+        quartic = [
             Shot(sigma=-curve * minimum, x=x, u=curve / unit * (x - minimum * unit) ** 2 / 2,
                  slope=curve / unit * (x - minimum * unit))
             for minimum in (0.0, 0.25, 0.5, 1.0, 2.0) for curve in (0.03, 0.1, 0.3, 1.0)
         ]
+        sextic = [
+            Shot(sigma=sigma, x=x, u=sigma * (x - x**3 / (3 * (minimum * unit) ** 2)),
+                 slope=sigma * (1 - (x / (minimum * unit)) ** 2))
+            for minimum in (1.0, 1.5, 2.0, 2.5, 3.0) for sigma in (-0.3 * self.lowest, -self.lowest)
+        ]
+        return [*quartic, *sextic]
 
     # ---- one candidate ------------------------------------------------------------------------
 
     def _try(
         self, shot: Shot, kept: list[tuple[GridSolution, FixedPoint]], counts: dict[str, int]
     ) -> None:
-        start, args = self.problem.start(shot, self._declared.upto)
-        solution = self.problem.solve(start, args, self.settings.grid)
+        solution = self._smoothest(shot)
         if solution is None:
             return
+        args = solution.args
         counts["converged"] += 1
         if any(self._same(solution, other) for other, _ in kept):
             return
@@ -123,6 +141,17 @@ class GridSearch(AbstractSearch):
             counts["lost in a wider box"] += 1
             return
         kept.append((solution, self._record(solution, again)))
+
+    def _smoothest(self, shot: Shot) -> GridSolution | None:
+        """The solution on the grid, started from the shot and from the shot's solution on a coarse grid: a set of nodes
+        also admits rough solutions close to the smooth one, which betray themselves by their last coefficients."""
+        newton, upto = self.settings.grid, self._declared.upto
+        found = [self.problem.solve(*self.problem.start(shot, upto), newton)]
+        rough = self.coarse.solve(*self.coarse.start(shot, upto), newton)
+        if rough is not None:
+            found.append(self.problem.solve(*self.problem.transfer(rough, float(rough.args.box)), newton))
+        solutions = [s for s in found if s is not None]
+        return min(solutions, key=tail) if solutions else None
 
     def _slopes(self, solution: GridSolution) -> np.ndarray:
         """u' at a few points inside the smaller box: what tells solutions apart."""
@@ -138,7 +167,7 @@ class GridSearch(AbstractSearch):
     def _same(self, a: GridSolution, b: GridSolution) -> bool:
         first, second = self._slopes(a), self._slopes(b)
         size = max(np.max(np.abs(first)), np.max(np.abs(second)))
-        return bool(np.max(np.abs(first - second)) < 1e-4 * size + 1e-9)
+        return bool(np.max(np.abs(first - second)) < 1e-4 * size + 1e-6)
 
     def _measure(self, examiner: Examiner, solution: GridSolution) -> Measured:
         g = solution.unknowns * np.asarray(solution.args.scale)
@@ -180,6 +209,14 @@ class GridSearch(AbstractSearch):
             if solution.flow.minimum_function:
                 found["minimum for eta"] = float(measured.g[-1])
         return found
+
+
+def tail(solution: GridSolution) -> float:
+    """Size of the last Chebyshev coefficients relative to the largest non-constant one."""
+    block = solution.flow.block
+    assert isinstance(block, ChebyshevGrid)
+    c = np.abs(solution.unknowns[: block.points])
+    return float(np.max(c[-4:]) / max(float(np.max(c[1:])), 1e-300))
 
 
 def refined_minimum(solution: GridSolution, g: np.ndarray, name: str) -> float | None:

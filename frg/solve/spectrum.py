@@ -18,28 +18,36 @@ class Spectrum(NamedTuple):
 
 
 def spectrum(
-    jacobian: np.ndarray, mass: np.ndarray, scale: np.ndarray, algebraic: np.ndarray
+    jacobian: np.ndarray, mass: np.ndarray, scale: np.ndarray, algebraic: np.ndarray,
+    columns: np.ndarray | None = None,
 ) -> Spectrum:
     """Eigenvalues of M^-1 db/dg at a fixed point by QZ, without forming M^-1.
 
     All arguments are for the active scaled unknowns; `scale` (n,) turns them into reported ones.
     Algebraic unknowns a with condition h(g, a) = 0 follow the others, da = -h_a^-1 h_g dg, and are
-    eliminated first. Infinite eigenvalues (directions without a flow) are dropped."""
+    eliminated first. Infinite eigenvalues (directions without a flow) are dropped. `columns` (n,) are sizes expected of
+    the eigenvectors' entries: rounding errors of QZ are relative to the norm of the pencil, and the high
+    Chebyshev modes of a grid would dominate it."""
     import scipy.linalg
 
     condition = float(np.linalg.cond(_equilibrated(jacobian)))
     moving, fixed = ~algebraic, algebraic
     J = jacobian[np.ix_(moving, moving)]
     if fixed.any():
-        follow = np.linalg.solve(jacobian[np.ix_(fixed, fixed)], jacobian[np.ix_(fixed, moving)])
+        # least squares: at a constant potential the position of the minimum is undetermined
+        follow = np.linalg.lstsq(jacobian[np.ix_(fixed, fixed)], jacobian[np.ix_(fixed, moving)], rcond=None)[0]
         J = J - jacobian[np.ix_(moving, fixed)] @ follow
     M = mass[np.ix_(moving, moving)]
+    weight = np.ones(moving.sum()) if columns is None else columns[moving]
+    J, M = J * weight, M * weight
+    rows = 1 / np.maximum(np.max(np.abs(J), axis=1), np.max(np.abs(M), axis=1))[:, None]
+    J, M = J * rows, M * rows
     values, left, right = scipy.linalg.eig(J, M, left=True, right=True)
     finite = np.isfinite(values)
     values, left, right = values[finite], left[:, finite], right[:, finite]
     order = sort_order(-values)
     theta = -values[order]
-    size = scale[moving][:, None]
+    size = (scale[moving] * weight)[:, None]
     right = right[:, order] * size
     left = (M.conj().T @ left[:, order]) / size
     right = right / np.linalg.norm(right / size, axis=0)

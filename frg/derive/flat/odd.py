@@ -42,6 +42,8 @@ def odd_sector(potential: Potential, book: LoopBook, eta: sympy.Expr) -> OddSect
     w = to_coordinates(potential, derivative_by_fields(potential, (0, 0)))
     if book.regulator.closed_form:
         response = -2 / (1 + w)
+    elif book.closed_mass and eta == 0:
+        response = -2 * book.threshold(1, w, eta)
     else:
         P = symbols.inverse_propagator()
         response = -book.integral(symbols.regulator_insertion(eta) / (P + w) ** 2, decay=2)

@@ -131,7 +131,9 @@ def _masses(
         for call in sorted(rhs.atoms(sympy.Function), key=str):
             if type(call).__name__ != "l":
                 continue
-            quiet = LoopBook(book.regulator, book.dimension, close=False)
+            quiet = LoopBook(
+                book.regulator, book.dimension, close=False, dimension_value=book.dimension_value
+            )
             mass = _lower(truncation, call.args[1], functions, quiet)
             if mass.free_symbols and mass not in found:
                 found.append(mass)
