@@ -19,6 +19,7 @@ from frg.records import FixedPoint, Profile
 from frg.solve.spectrum import Spectrum, count_directions, sort_order, spectrum
 
 AT_BOUNDARY = 1e-6  # fixed points may sit on the boundary of the domain (the mass regulator's do)
+SLOWEST = 0.35  # least ratio of neighbouring Chebyshev coefficients allowed for in eigenvectors
 PROFILE_POINTS = 121
 PROFILE_DIRECTIONS = 4
 
@@ -133,14 +134,16 @@ class Examiner:
         return stretched
 
     def _columns(self, c: np.ndarray) -> np.ndarray:
-        """Sizes expected in eigenvectors: those of the solution's own Chebyshev coefficients on a grid."""
+        """Sizes expected in eigenvectors: those of the solution's own Chebyshev coefficients on a grid, which may fall
+        faster than those of the eigenvectors (a potential can be a polynomial)."""
         block, columns = self.flow.block, np.ones(len(c))
         if isinstance(block, ChebyshevGrid):
             for f in range(len(block.functions)):
                 own = np.abs(c[f * block.points : (f + 1) * block.points])
                 envelope = np.maximum.accumulate(own[::-1])[::-1]
                 if block.points > 1 and envelope[1] > 1e-6 * envelope[0]:
-                    columns[f * block.points : (f + 1) * block.points] = np.maximum(envelope / envelope[0], 1e-13)
+                    least = np.maximum(SLOWEST ** np.arange(block.points), 1e-13)
+                    columns[f * block.points : (f + 1) * block.points] = np.maximum(envelope / envelope[0], least)
         return columns
 
     def masses(self, g: np.ndarray, x: np.ndarray, args: Arguments) -> np.ndarray:

@@ -19,9 +19,11 @@ from frg.solve.search import AbstractSearch, SearchSettings, Warm, lowest_of, ra
 from frg.solve.shooting import Shooting, Shot, can_shoot, companion
 
 COARSE = 1e-4  # accuracy of loop integrals in the shooting scan
+ROUGH = 1e-6  # last relative to first Chebyshev coefficients of a solution that is not smooth
 COARSE_POINTS = 24  # of the grid that smoothes a start
 MORE_POINTS = 12  # of the second grid that cleans the spectrum
-WIDER_BOX = 1.25  # of the second grid, against the box of the first
+WIDER_BOXES = (1.25, 1.15, 1.1)  # of the second grid, against the box of the first
+SMOOTH = 1e-13  # the same for a solution resolved to round-off
 MOST_BRACKETS = 48  # of the shooting scan; more sign changes than this mean that the scan is not reliable
 
 
@@ -131,13 +133,11 @@ class GridSearch(AbstractSearch):
         solution = self._smoothest(shot)
         if solution is None:
             return
-        args = solution.args
         counts["converged"] += 1
         if any(self._same(solution, other) for other, _ in kept):
             return
-        box = WIDER_BOX * float(args.box)
-        again = self.second.solve(*self.second.transfer(solution, box), self.settings.grid)
-        if again is None or not self._same(solution, again):
+        again = self._again(solution)
+        if again is None:
             counts["lost in a wider box"] += 1
             return
         kept.append((solution, self._record(solution, again)))
@@ -151,7 +151,36 @@ class GridSearch(AbstractSearch):
         if rough is not None:
             found.append(self.problem.solve(*self.problem.transfer(rough, float(rough.args.box)), newton))
         solutions = [s for s in found if s is not None]
-        return min(solutions, key=tail) if solutions else None
+        return self._boxed(min(solutions, key=tail)) if solutions else None
+
+    def _again(self, solution: GridSolution) -> GridSolution | None:
+        """The solution on the second grid over a wider box, directly or by way of the coarse grid; the smoothest."""
+        newton, found = self.settings.grid, []
+        for wider in WIDER_BOXES:
+            box = wider * float(solution.args.box)
+            starts = [solution, self.coarse.solve(*self.coarse.transfer(solution, box), newton)]
+            for start in starts:
+                if start is None:
+                    continue
+                again = self.second.solve(*self.second.transfer(start, box), newton)
+                if again is None or not self._same(solution, again):
+                    continue
+                if tail(again) < SMOOTH:
+                    return again
+                found.append(again)
+        return min(found, key=tail) if found else None
+
+    def _boxed(self, solution: GridSolution) -> GridSolution:
+        """The solution on the box that belongs to its own outermost minimum, which may not be the start's."""
+        g = solution.unknowns * np.asarray(solution.args.scale)
+        minimum = refined_minimum(solution, g, self.equations.functions[0].name)
+        if minimum is None:
+            return solution
+        box = self._declared.upto * minimum
+        if abs(box / float(solution.args.box) - 1) < 0.02:
+            return solution
+        moved = self.problem.solve(*self.problem.transfer(solution, box), self.settings.grid)
+        return moved if moved is not None and tail(moved) < ROUGH else solution
 
     def _slopes(self, solution: GridSolution) -> np.ndarray:
         """u' at a few points inside the smaller box: what tells solutions apart."""
