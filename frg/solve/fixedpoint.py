@@ -8,7 +8,7 @@ from typing import Any
 
 import numpy as np
 
-from frg.evaluate.build import flow_arguments, natural_units, stretched_scale
+from frg.evaluate.build import natural_units, stretched_scale
 from frg.evaluate.flow import Arguments, Flow, masses_at_centre
 from frg.evaluate.fieldpolynomial import FieldPolynomial
 from frg.evaluate.grid import ChebyshevGrid
@@ -203,11 +203,8 @@ def _beta(b: np.ndarray, M: np.ndarray, algebraic: np.ndarray) -> np.ndarray:
 
 
 def coordinate_unit(flow: Flow, args: Arguments) -> float:
+    """Natural size of the coordinates of the potential."""
     return natural_units(flow, args)[0]
-
-
-def fresh_arguments(flow: Flow, box: float = 1.0) -> Arguments:
-    return flow_arguments(flow, box=box)
 
 
 def is_gaussian(flow: Flow, g: np.ndarray, args: Arguments, tolerance: float) -> bool:

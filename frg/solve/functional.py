@@ -38,6 +38,7 @@ class GridSolution:
     step: float
 
 
+STEEP = 0.3
 WITHOUT_MINIMUM = 12.0  # the scale on which a Gaussian spectrum becomes visible, in natural units of the coordinate
 EXACT = 1e-14  # a residual at round-off needs no further step; beside a marginal direction the step has no meaning
 
@@ -71,14 +72,26 @@ class GridProblem:
         jax = load().jax
         return jax.jit(self.flow.system)
 
+    @cached_property
+    def _plain(self) -> Arguments:
+        return flow_arguments(self.flow)
+
+    @cached_property
+    def unit(self) -> float:
+        """Natural size of the coordinate."""
+        return natural_units(self.flow, self._plain)[0]
+
+    def arguments(self, box: float) -> Arguments:
+        """Arguments for a box; the scale of the unknowns does not depend on it."""
+        return self._plain._replace(box=load().numpy.asarray(float(box)))
+
     def start(self, shot: Shot, upto: float) -> tuple[np.ndarray, Arguments]:
         """Scaled unknowns and arguments for a candidate: the followed part, then its power-law growth
-        x^(d/(d-2)), on a box of `upto` times the outermost minimum, or times WITHOUT_MINIMUM natural units."""
-        args = flow_arguments(self.flow)
-        size, _ = natural_units(self.flow, args)
+        x^(d/(d-2)), on a box of `upto` times its extent."""
+        size = self.unit
         minimum = outermost_minimum(shot.x, shot.slope)
-        box = upto * (minimum if minimum is not None else WITHOUT_MINIMUM * size)
-        args = flow_arguments(self.flow, box=box)
+        box = upto * extent(shot.x, shot.slope, size)
+        args = self.arguments(box)
         values = self._extended(shot, np.asarray(self.grid.coordinate_values(box)))
         c = self.grid.coefficients_of(values)
         if self.flow.minimum_function:
@@ -130,7 +143,7 @@ class GridProblem:
         """The solution of another grid as a start on this one with another box."""
         old = solution.flow.block
         assert isinstance(old, ChebyshevGrid)
-        args = flow_arguments(self.flow, box=box)
+        args = self.arguments(box)
         old_box, count = float(solution.args.box), old.points
         g = solution.unknowns * np.asarray(solution.args.scale)
         x = np.asarray(self.grid.coordinate_values(box))
@@ -143,6 +156,16 @@ class GridProblem:
         values = values + slope * old_box / power * (np.maximum(x / old_box, 1.0) ** power - 1)
         c = np.concatenate([self.grid.coefficients_of(values), g[count:]])
         return c / np.asarray(args.scale), args
+
+
+def extent(x: np.ndarray, slope: np.ndarray, unit: float) -> float:
+    """The length over which a potential varies: its outermost minimum; without one, half of where the slope reaches
+    STEEP (about the minimum for potentials that have one); for a flat one WITHOUT_MINIMUM natural units."""
+    minimum = outermost_minimum(x, slope)
+    if minimum is not None:
+        return minimum
+    steep = np.flatnonzero(slope > STEEP)
+    return float(x[steep[0]]) / 2 if len(steep) else WITHOUT_MINIMUM * unit
 
 
 def outermost_minimum(x: np.ndarray, slope: np.ndarray) -> float | None:

@@ -9,12 +9,12 @@ import numpy as np
 
 from frg.derive.equations import FlowEquations
 from frg.errors import NotYet, Place
-from frg.evaluate.build import dimension_value, flow_arguments, loop_rule, natural_units
+from frg.evaluate.build import dimension_value, flow_arguments, loop_rule
 from frg.evaluate.grid import ChebyshevGrid
 from frg.evaluate.jaxload import load
 from frg.records import FixedPoint
 from frg.solve.fixedpoint import Examiner, Measured, build_record
-from frg.solve.functional import GridProblem, GridSolution, agreeing
+from frg.solve.functional import GridProblem, GridSolution, agreeing, extent
 from frg.solve.search import AbstractSearch, SearchSettings, Warm, lowest_of, ranked
 from frg.solve.shooting import Shooting, Shot, can_shoot, companion
 
@@ -98,12 +98,12 @@ class GridSearch(AbstractSearch):
         return [self._constant(), *(s for s in shots if len(s.x) > 20)]
 
     def _unit(self) -> float:
-        return natural_units(self.problem.flow, flow_arguments(self.problem.flow))[0]
+        return self.problem.unit
 
     def _constant(self) -> Shot:
         """The Gaussian fixed point: the constant potential at which -d U balances the loops."""
         flow = self.problem.flow
-        args = flow_arguments(flow, box=self._unit())
+        args = self.problem.arguments(self._unit())
         vacuum = float(np.asarray(flow.right_side(np.zeros(flow.size), args))[0])
         x = np.linspace(0.1, 6.0, 60) * self._unit()
         return Shot(sigma=0.0, x=x, u=np.full(60, vacuum / dimension_value(self.equations)), slope=np.zeros(60))
@@ -170,13 +170,18 @@ class GridSearch(AbstractSearch):
                 found.append(again)
         return min(found, key=tail) if found else None
 
+    def _extent(self, solution: GridSolution) -> float:
+        g, block = solution.unknowns * np.asarray(solution.args.scale), solution.flow.block
+        assert isinstance(block, ChebyshevGrid)
+        x = np.linspace(0.0, float(solution.args.box), 601)
+        slope = np.polynomial.chebyshev.chebval(
+            2 * x / float(solution.args.box) - 1, block.differentiation @ g[: block.points]
+        )
+        return extent(x, slope * 2 / float(solution.args.box), self._unit())
+
     def _boxed(self, solution: GridSolution) -> GridSolution:
-        """The solution on the box that belongs to its own outermost minimum, which may not be the start's."""
-        g = solution.unknowns * np.asarray(solution.args.scale)
-        minimum = refined_minimum(solution, g, self.equations.functions[0].name)
-        if minimum is None:
-            return solution
-        box = self._declared.upto * minimum
+        """The solution on the box that belongs to its own extent, which may not be the start's."""
+        box = self._declared.upto * self._extent(solution)
         if abs(box / float(solution.args.box) - 1) < 0.02:
             return solution
         moved = self.problem.solve(*self.problem.transfer(solution, box), self.settings.grid)

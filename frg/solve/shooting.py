@@ -180,8 +180,7 @@ class Shooting:
         size, _ = natural_units(self.flow, args)
         z = np.sqrt(size) * np.linspace(0.1, max(settings.reaches), settings.steps + 1)
         mass = self._fire(sigma, args, z)[3]
-        shots: list[Shot] = []
-        dropped = 0
+        stops, ends, dropped = [], [], 0
         for reach in settings.reaches:
             stop = int(np.searchsorted(z[1:], np.sqrt(size) * reach * (1 - 1e-9)))
             sign = np.sign(mass[:, stop])
@@ -189,10 +188,12 @@ class Shooting:
             if len(changes) > most:
                 dropped += len(changes)
                 continue
-            ends = np.stack([sigma[changes], sigma[changes + 1]], axis=1)
-            ends = self._refine(ends, settings.rounds, stop, args, z)
-            shots += [self._shot(low, high, args, z, unit) for low, high in _merged(ends)]
-        return sorted(shots, key=lambda shot: shot.sigma), dropped
+            stops += [stop] * len(changes)
+            ends += [(sigma[k], sigma[k + 1]) for k in changes]
+        if not ends:
+            return [], dropped
+        refined = self._refine(np.array(ends), np.array(stops), settings.rounds, args, z)
+        return self._shots(_merged(refined), args, z, unit), dropped
 
     def _fire(self, sigma: np.ndarray, args: Arguments, z: np.ndarray) -> list[np.ndarray]:
         """[steps survived, u, u', mass] for every sigma, in batches of fixed size; after a singularity the
@@ -208,27 +209,36 @@ class Shooting:
         return [np.concatenate(v) for v in zip(*found, strict=True)]
 
     def _refine(
-        self, ends: np.ndarray, rounds: int, stop: int, args: Arguments, z: np.ndarray
+        self, ends: np.ndarray, stops: np.ndarray, rounds: int, args: Arguments, z: np.ndarray
     ) -> np.ndarray:
-        """Cut every bracket (K, 2) at `inside` points and keep the first piece with a sign change; all
-        brackets in one batch a round."""
+        """Cut every bracket (K, 2) at `inside` points and keep the first piece in which the mass at the step `stops`
+        (K,) changes sign; all brackets in one batch a round."""
         inside = 12
-        for _ in range(rounds if len(ends) else 0):
+        rows = np.arange(len(ends))
+        for _ in range(rounds):
             grids = np.linspace(ends[:, 0], ends[:, 1], inside + 2, axis=1)
-            mass = self._fire(grids.ravel(), args, z)[3][:, stop]
-            sign = np.sign(mass).reshape(grids.shape)
+            mass = self._fire(grids.ravel(), args, z)[3].reshape(*grids.shape, -1)
+            sign = np.sign(mass[rows, :, stops])
             first = np.argmax(sign[:, :-1] * sign[:, 1:] <= 0, axis=1)
-            rows = np.arange(len(ends))
             ends = np.stack([grids[rows, first], grids[rows, first + 1]], axis=1)
         return ends
 
-    def _shot(self, low: float, high: float, args: Arguments, z: np.ndarray, unit: float) -> Shot:
-        """The common part of the two solutions that enclose the fixed point."""
-        life, u, slope, _ = self._fire(np.array([low, high]), args, z)
-        apart = np.abs(slope[0] - slope[1]) > 1e-2 * (np.abs(slope[0]) + np.abs(slope[1]) + 1e-12 * unit)
-        together = int(np.argmax(apart)) if apart.any() else len(apart)
-        kept = max(min(together, int(life.min())), 3)
-        return Shot(sigma=(low + high) / 2 * unit, x=z[1 : kept + 1] ** 2, u=u[0][:kept], slope=slope[0][:kept])
+    def _shots(
+        self, ends: list[tuple[float, float]], args: Arguments, z: np.ndarray, unit: float
+    ) -> list[Shot]:
+        """The common part of the two solutions that enclose each fixed point, by rising sigma."""
+        life, u, slope, _ = self._fire(np.array(ends).ravel(), args, z)
+        found = []
+        for k, (low, high) in enumerate(ends):
+            a, b = 2 * k, 2 * k + 1
+            gap = np.abs(slope[a] - slope[b])
+            apart = gap > 1e-2 * (np.abs(slope[a]) + np.abs(slope[b]) + 1e-12 * unit)
+            together = int(np.argmax(apart)) if apart.any() else len(apart)
+            kept = max(min(together, int(min(life[a], life[b]))), 3)
+            found.append(
+                Shot(sigma=(low + high) / 2 * unit, x=z[1 : kept + 1] ** 2, u=u[a][:kept], slope=slope[a][:kept])
+            )
+        return found
 
 
 BATCH = 256  # starts a compiled call

@@ -85,7 +85,7 @@ def test_bubble_slope_is_the_momentum_derivative_of_the_bubble() -> None:
     from frg.language.program import compile_expressions
 
     a, b, regulator = 0.4, 0.1, Gaussian(alpha=1.3)
-    book = LoopBook(regulator, sympy.Integer(3), close=False)
+    book = LoopBook(regulator, sympy.Integer(3), close=False, dimension_value=3.0)
     bubble_slope(book, sympy.Float(a), sympy.Float(b), sympy.Integer(0))
     flow = build_flow(derive_flow(scalar(about="0"), regulator), (2,))
     rule = flow_arguments(flow).rule
