@@ -140,7 +140,11 @@ class GridSearch(AbstractSearch):
         if again is None:
             counts["lost in a wider box"] += 1
             return
-        kept.append((solution, self._record(solution, again)))
+        record = self._record(solution, again)
+        if not record.residual < self.settings.judgement.residual:
+            counts["residual too large"] = counts.get("residual too large", 0) + 1
+            return
+        kept.append((solution, record))
 
     def _smoothest(self, shot: Shot) -> GridSolution | None:
         """The solution on the grid, started from the shot and from the shot's solution on a coarse grid: a set of nodes

@@ -81,7 +81,9 @@ def test_limits_in_the_number_of_components(shelf) -> None:
     # N = -2: theta_1 = 2 exactly; N to infinity: theta_n = d - 2n
     (point,) = physical(solve(shelf / "on_lpa_grid.toml", overrides=("N=-2",)))
     assert point.theta[0].real == pytest.approx(2, abs=1e-9)
-    (point,) = physical(solve(shelf / "on_lpa_grid.toml", overrides=("N=1000000",)))
+    # the phi^6 coupling is marginal up to 1/N, so that points along it are fixed within rounding: set them aside
+    found = physical(solve(shelf / "on_lpa_grid.toml", overrides=("N=1000000",)))
+    (point,) = [p for p in found if p.marginal == 0]
     assert point.theta[:4].real == pytest.approx([1, -1, -3, -5], abs=1e-5)
 
 
@@ -168,7 +170,7 @@ def test_first_order_of_the_epsilon_expansion_is_universal(shelf, regulator: str
 def test_running_wave_function_on_the_grid_equals_the_expansion(shelf) -> None:
     """LPA' from two discretisations; no published digits for this projection are at hand."""
     (grid,) = physical(solve(shelf / "on_lpa_prime_grid.toml"))
-    expanded = physical(solve(shelf / "on_lpa_prime.toml", order=12))[0]
+    expanded = physical(solve(shelf / "on_lpa_prime.toml", order=16))[0]
     assert grid.eta["phi"] == pytest.approx(expanded.eta["phi"], abs=1e-7)
     assert grid.theta[0].real == pytest.approx(expanded.theta[0].real, abs=1e-6)
     # J. Berges, N. Tetradis, C. Wetterich, Phys. Rept. 363 (2002) 223, Table: N = 2 eta = 0.042, nu = 0.697 with
