@@ -91,7 +91,8 @@ def _converge(commands) -> None:  # type: ignore[no-untyped-def]
                       "directions,\nand judges whether the number of relevant directions stays finite: supported, not "
                       "supported or undecided,\nwith reasons. Evidence, not proof.")
     _problem(parser)
-    parser.add_argument("--orders", metavar="A..B", help='orders to study, for example 2..12 or 2..20:2 (default: those of the file)')
+    parser.add_argument("--orders", metavar="A..B",
+                        help="orders to study, for example 2..12 or 2..20:2 (default: those of the file)")
     parser.add_argument("--all", action="store_true", help="search harder at every order")
     parser.add_argument("--resume", metavar="RUN", help="go on with an interrupted run of the same inputs")
     parser.add_argument("--no-report", action="store_true", help="do not write the HTML report and the plot beside the run")

@@ -17,7 +17,6 @@ from frg.evaluate.fieldpolynomial import FieldPolynomial, choose_pivots
 from frg.evaluate.flow import Arguments, Flow, Rule
 from frg.evaluate.grid import ChebyshevGrid
 from frg.evaluate.jaxload import load
-from frg.evaluate.series import series_arithmetic
 from frg.evaluate.taylor import Taylor, TaylorFunction
 from frg.language.program import compile_expressions
 from frg.language.truncation import RunningFunction

@@ -7,9 +7,14 @@ units of Z k^2) and t = ln k,  d_t R_k = Z k^2 [(2 - eta) s - 2 y s'].
 from __future__ import annotations
 
 import abc
+import math
 from dataclasses import dataclass
+from typing import TYPE_CHECKING, ClassVar
 
 import numpy as np
+
+if TYPE_CHECKING:
+    import sympy
 
 
 ACCURACY = 2e-13  # relative error wanted of loop integrals
@@ -43,8 +48,13 @@ class AbstractRegulator(abc.ABC):
     """A shape s(y) with its parameters as fields. Concrete classes are frozen dataclasses whose
     fields are the parameters (floats); they know nothing of truncations or jax."""
 
-    name: str  # class attribute of the concrete classes
-    reference: str
+    name: ClassVar[str]
+    reference: ClassVar[str]
+    support: ClassVar[float] = math.inf  # s(y) vanishes beyond it
+
+    @abc.abstractmethod
+    def shape(self) -> sympy.Expr:
+        """s(y) inside its support, in the symbol y and the parameters. Not defined for a sharp cutoff."""
 
     @property
     @abc.abstractmethod

@@ -35,15 +35,9 @@ def _require(regulator: AbstractRegulator, name: str, condition: bool, wanted: s
 class _Shape(AbstractRegulator):
     """Common parts: parameters are the fields; s(y) lives on 0 < y < support."""
 
-    support: ClassVar[float] = math.inf
-
     @property
     def parameters(self) -> dict[str, float]:
         return {f.name: float(getattr(self, f.name)) for f in fields(self)}
-
-    def shape(self) -> sympy.Expr:
-        """s(y) inside its support, in the symbol y and the parameters."""
-        raise AssertionError(f"{self.name} defines no shape")
 
     def _table(self, derivatives: int):  # type: ignore[no-untyped-def]
         return shape_table(self.shape(), self.parameters, derivatives)
@@ -225,6 +219,11 @@ class Sharp(_Shape):
     @property
     def closed_form(self) -> bool:
         return True
+
+    def shape(self) -> sympy.Expr:
+        raise InputError(
+            "the sharp cutoff has no shape s(y): it is a limit of steps", remedy="use its threshold functions"
+        )
 
     def rule(
         self, dimension: float, *, derivatives: int = 2, decay: int = 1, accuracy: float = ACCURACY

@@ -90,7 +90,7 @@ def draw_counts(run: Run, ax: Axes | None = None) -> Axes:
     top = float(counts.max(initial=1))
     ax.set(xlabel=order_label(run), ylabel="relevant directions", ylim=(-0.2, top + 1))
     _whole_ticks(ax)
-    ax.yaxis.get_major_locator().set_params(integer=True)
+    _whole_ticks(ax, "y")
     return ax
 
 
@@ -105,9 +105,8 @@ def draw_landscape(run: Run, ax: Axes | None = None) -> Axes:
         ]
         if rows:
             x, y = zip(*rows, strict=True)
-            face = "none" if marker == "o" else colour
-            ax.scatter(x, y, s=16, marker=marker, linewidths=0.9, label=kind, facecolors=face,
-                       **({"edgecolors": colour} if marker == "o" else {}))
+            ax.plot(x, y, linestyle="none", marker=marker, markersize=4, markeredgewidth=0.9, label=kind,
+                    markerfacecolor="none", markeredgecolor=colour)
     if run.tracks:
         track = run.tracks[0]
         lead = [run.steps[int(s)].fixed_points[int(p)].theta[0].real
@@ -176,10 +175,10 @@ def _normalised(values: np.ndarray) -> np.ndarray:
     return values / _size(values)
 
 
-def _whole_ticks(ax: Axes) -> None:
+def _whole_ticks(ax: Axes, which: str = "x") -> None:
     from matplotlib.ticker import MaxNLocator
 
-    ax.xaxis.set_major_locator(MaxNLocator(integer=True))
+    (ax.xaxis if which == "x" else ax.yaxis).set_major_locator(MaxNLocator(integer=True))
 
 
 def exponents_figure(run: Run) -> Figure:

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -109,10 +108,10 @@ def study_table(run: Run):  # type: ignore[no-untyped-def]
 def study_rows(run: Run) -> list[tuple[str, ...]]:
     """(order, roots, relevant, nu, theta, residual, distance of the next root over that of the chosen one)."""
     track = run.tracks[0] if run.tracks else None
-    rows = []
+    rows: list[tuple[str, ...]] = []
     for s, step in enumerate(run.steps):
         order = ", ".join(str(v) for v in step.order.values())
-        where = np.flatnonzero(track.steps == s) if track is not None else []
+        where = np.flatnonzero(track.steps == s) if track is not None else np.zeros(0, dtype=int)
         if track is None or not len(where):
             rows.append((order, str(len(step.fixed_points)), "-", "-", step.outcome.word, "-", "-"))
             continue
@@ -120,10 +119,10 @@ def study_rows(run: Run) -> list[tuple[str, ...]]:
         point = step.fixed_points[int(track.points[k])]
         nu = correlation_exponent(complex(point.theta[0]))
         ratio = track.next_distance[k] / track.distance[k] if track.distance[k] > 0 else np.inf
+        further = "none" if not np.isfinite(ratio) else (f"{ratio:.1f}x" if ratio < 1000 else ">1000x")
         rows.append((
             order, str(len(step.fixed_points)), str(point.relevant), f"{nu:.10f}" if nu is not None else "-",
-            format_exponents(point.theta, 3, 5).split(", …")[0], f"{point.residual:.0e}", f"{ratio:.1f}x" if ratio < 1000 else ">1000x"
-            if np.isfinite(ratio) else "none",
+            format_exponents(point.theta, 3, 5).split(", …")[0], f"{point.residual:.0e}", further,
         ))
     return rows
 

@@ -9,8 +9,8 @@ from typing import Any
 import numpy as np
 
 from frg.evaluate.build import natural_units, stretched_scale
-from frg.evaluate.flow import Arguments, Flow, masses_at_centre
 from frg.evaluate.fieldpolynomial import FieldPolynomial
+from frg.evaluate.flow import Arguments, Flow, masses_at_centre
 from frg.evaluate.grid import ChebyshevGrid
 from frg.evaluate.jaxload import load
 from frg.evaluate.odd import odd_active, odd_operator, odd_scale

@@ -14,7 +14,6 @@ from frg.errors import Outcome
 from frg.evaluate.build import build_flow, flow_arguments, loop_rule
 from frg.evaluate.fieldpolynomial import FieldPolynomial
 from frg.evaluate.flow import Arguments, Flow
-from frg.evaluate.grid import ChebyshevGrid
 from frg.evaluate.taylor import Taylor
 from frg.records import FixedPoint, Step
 from frg.solve.fixedpoint import (
@@ -22,7 +21,6 @@ from frg.solve.fixedpoint import (
     Judgement,
     Measured,
     build_record,
-    coordinate_unit,
 )
 from frg.solve.functional import GridNewton
 from frg.solve.ladder import Ladder, LadderScan, has_ladder

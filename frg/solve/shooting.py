@@ -19,7 +19,7 @@ import numpy as np
 
 from frg.derive import symbols
 from frg.derive.equations import FlowEquations
-from frg.evaluate.build import build_flow, dimension_value, flow_arguments, natural_units
+from frg.evaluate.build import build_flow, natural_units
 from frg.evaluate.flow import Arguments, Flow, integrate
 from frg.evaluate.jaxload import load
 from frg.evaluate.series import series_arithmetic
@@ -112,18 +112,20 @@ class Shooting:
 
     def _third(self, x: Any, jets: tuple[Any, Any, Any], args: Arguments) -> Any:
         (flow,) = self.equations.functions
-        programs, arithmetic = self._programs, series_arithmetic()
+        programs, arithmetic, rule = self._programs, series_arithmetic(), args.rule
+        assert rule is not None or not self.equations.loops
         env = {**args.parameters, flow.coordinates[0]: x}
         env |= {symbols.jet(flow.name, (k,)).name: jets[k] for k in range(3)}
         for loop in self.equations.loops:
             symbol = loop.symbol
-            env[symbol] = integrate(self.flow._loops[symbol][1], env, args.rule, surface=False,
+            env[symbol] = integrate(self.flow._loops[symbol][1], env, rule, surface=False,  # type: ignore[arg-type]
                                     subtract=self.flow.subtract)
         partial = []
         for name in programs["by"]:
             total = programs["outer"][name].run(env, arithmetic)[0]
             for symbol, weight in programs["weights"].items():
-                slope = integrate(programs["inner"][symbol, name], env, args.rule, surface=False, subtract=False)
+                inner = programs["inner"][symbol, name]
+                slope = integrate(inner, env, rule, surface=False, subtract=False)  # type: ignore[arg-type]
                 total = total + weight.run(env, arithmetic)[0] * slope
             partial.append(total)
         F_x, F_0, F_1, F_2 = partial

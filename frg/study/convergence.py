@@ -5,6 +5,8 @@ from __future__ import annotations
 from collections.abc import Iterator
 from dataclasses import dataclass
 
+import numpy as np
+
 from frg.derive.equations import FlowEquations
 from frg.errors import InputError, Place
 from frg.records import Step, Track, Verdict
@@ -48,12 +50,11 @@ class ConvergenceStudy:
     def conclude(self, steps: tuple[Step, ...]) -> tuple[tuple[Track, ...], Verdict]:
         """Tracks and the verdict from all steps."""
         tracks = track_points(steps, self.settings.tracking)
-        canonical = [None for _ in steps]
+        canonical: list[np.ndarray | None] = [None] * len(steps)
         if isinstance(self.search, PolynomialSearch):
-            canonical = [  # type: ignore[assignment]
-                canonical_exponents(self.equations, self.search.flow, order) for order in self.orders[: len(steps)]
-            ]
-        return tracks, judge(steps, tracks, canonical, self.settings.verdict)  # type: ignore[arg-type]
+            flow = self.search.flow
+            canonical = [canonical_exponents(self.equations, flow, n) for n in self.orders[: len(steps)]]
+        return tracks, judge(steps, tracks, canonical, self.settings.verdict)
 
 
 def convergence_study(

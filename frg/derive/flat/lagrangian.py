@@ -52,7 +52,8 @@ def split_kinetic(truncation: Truncation) -> tuple[sympy.Expr, sympy.Expr]:
     lagrangian = truncation.lagrangian
     if lagrangian is None:
         raise FrgError("this truncation has a typed-in flow and no Lagrangian")
-    kinetic, potential = [], []
+    kinetic: list[sympy.Expr] = []
+    potential: list[sympy.Expr] = []
     for term in sympy.Add.make_args(sympy.expand(lagrangian)):
         derivative = any(type(f).__name__ == "d" for f in term.atoms(sympy.Function))
         (kinetic if derivative else potential).append(term)
@@ -97,10 +98,10 @@ def read_potential(truncation: Truncation, potential: sympy.Expr) -> Potential:
             name=function.name, coordinates=coordinates, function=function,
             invariants=(), couplings=(), terms={},
         )
-    coordinates, invariants = _field_coordinates(truncation, list(invariants))
+    coordinates, in_fields = _field_coordinates(truncation, list(invariants))
     return Potential(
         name=function.name, coordinates=coordinates, function=function,
-        invariants=tuple(invariants), couplings=(), terms={},
+        invariants=tuple(in_fields), couplings=(), terms={},
     )
 
 
