@@ -187,9 +187,9 @@ def _converge(options: Any, problem: Problem, command: str) -> int:
     study = convergence_study(problem.equations, orders, settings)
     inputs = run_inputs(problem, settings, orders, "converge")
     loud = not (options.json or options.quiet)
-    if loud:
-        _print_equations(problem)
     with _converge_store(options, inputs, command) as store:
+        if loud:
+            _print_equations(problem)
         status = _advance(study, store, loud)
         finished = store.read()
     if options.json:
@@ -270,7 +270,7 @@ def write_pages(finished: Run, path: Path) -> None:
     from frg.cli.shelf import write_beside
 
     for written in write_beside(finished, path):
-        print(f"wrote {written}")
+        print(f"wrote {_relative(str(written))}")
 
 
 def _say_kept(location: str | None) -> None:

@@ -31,7 +31,7 @@ def render_report(run: Run) -> str:
 
     environment = Environment(autoescape=True, trim_blocks=True, lstrip_blocks=True)
     template = environment.from_string(
-        resources.files("frg.show").joinpath("templates/report.html").read_text(encoding="utf-8")
+        resources.files("frg.show").joinpath("report.html").read_text(encoding="utf-8")
     )
     inputs = run.inputs
     values = ", ".join(f"{k} = {v:g}" for k, v in inputs.regulator_parameters.items())
