@@ -4,34 +4,41 @@ from __future__ import annotations
 
 import io
 import re
+from typing import Any
+
+SIZE = 14.0  # points
 
 
-def equation_svg(latex: str) -> str | None:
-    """One equation as an inline SVG, broken at top-level signs where it is long; None where the typesetter does not
-    understand it."""
+def equation_rows(latex: str) -> list[str] | None:
+    """One equation as inline SVG pictures, one a row, broken at top-level signs where it is long; None where the
+    typesetter does not understand it. The ink has no colour of its own: the page sets it by `fill`."""
+    try:
+        return [_picture(f"${row}$") for row in broken(simplified(latex))]
+    except (ValueError, RuntimeError, RecursionError):
+        return None
+
+
+def _picture(row: str) -> str:
     import matplotlib
     from matplotlib.backends.backend_agg import FigureCanvasAgg
     from matplotlib.figure import Figure
 
-    rows = [f"${row}$" for row in broken(simplified(latex))]
     figure = Figure(figsize=(0.01, 0.01))
     FigureCanvasAgg(figure)
-    try:
-        with matplotlib.rc_context({"svg.fonttype": "path", "svg.hashsalt": "frg", "mathtext.fontset": "stix"}):
-            for i, row in enumerate(rows):
-                figure.text(0.02 * (i > 0), -i * 70.0, row, fontsize=15, va="top")
-            buffer = io.StringIO()
-            figure.savefig(buffer, format="svg", bbox_inches="tight", pad_inches=0.04, transparent=True,
-                           metadata={"Date": None})
-    except (ValueError, RuntimeError):
-        return None
+    rules: Any = {"svg.fonttype": "path", "svg.hashsalt": "frg", "mathtext.fontset": "cm"}
+    with matplotlib.rc_context(rules):
+        figure.text(0, 0, row, fontsize=SIZE, va="baseline")
+        buffer = io.StringIO()
+        figure.savefig(buffer, format="svg", bbox_inches="tight", pad_inches=0.03, transparent=True,
+                       metadata={"Date": None})
     text = buffer.getvalue()
     return text[text.index("<svg") :]
 
 
 def simplified(latex: str) -> str:
-    """Constructs that the built-in typesetter lacks, in terms of those it has."""
-    text = latex.replace(r"\tfrac", r"\frac").replace(r"\quad", r"\;\;")
+    """Constructs that the built-in typesetter lacks, in terms of those it has; fractions at full size, for nested
+    ones shrink to nothing otherwise."""
+    text = latex.replace(r"\frac", r"\dfrac").replace(r"\tfrac", r"\frac").replace(r"\quad", r"\;\;")
     # the typesetter draws a plain apostrophe as a dot: write primes out as superscripts
     text = re.sub(r"([A-Za-z}])('+)(\^\{(\w+)\})?", _primes, text)
     return re.sub(r"\\text\{([^}]*)\}", lambda m: r"\mathrm{" + m.group(1).replace(" ", r"\ ") + "}", text)
@@ -44,8 +51,8 @@ def _primes(match: re.Match[str]) -> str:
     return base if power is None else "(" + base + ")^{" + power + "}"
 
 
-def broken(latex: str, width: int = 150) -> list[str]:
-    """Lines of at most about `width` characters of source, broken before + and - outside of all brackets."""
+def broken(latex: str, width: int = 70) -> list[str]:
+    """Lines of at most about `width` visible characters, broken before + and - outside of all brackets."""
     pieces, depth, start = [], 0, 0
     i = 0
     while i < len(latex):
@@ -67,8 +74,13 @@ def broken(latex: str, width: int = 150) -> list[str]:
     pieces.append(latex[start:])
     lines = [pieces[0]]
     for piece in pieces[1:]:
-        if len(lines[-1]) + len(piece) > width:
+        if _visible(lines[-1]) + _visible(piece) > width:
             lines.append(piece)
         else:
             lines[-1] += piece
     return lines
+
+
+def _visible(latex: str) -> int:
+    """About how many signs are seen: a command is one or none, brackets of the source are none."""
+    return len(re.sub(r"\\[A-Za-z]+|[{}^_\s]", "", latex))

@@ -2,26 +2,32 @@
 
 from __future__ import annotations
 
+import html
 import io
 import json
 import os
+import re
 import tempfile
 from importlib import resources
+from itertools import zip_longest
 from pathlib import Path
 from typing import Any
 
-from frg.records import Run, Step
-from frg.show.equations import equation_svg
+from frg.records import FixedPoint, Run, Step
+from frg.show.equations import equation_rows
 from frg.show.plots import all_figures, save_plot
 from frg.show.tables import exponent_lines, point_lines, study_rows, track_line
 
+SUMMARISED = 5  # couplings in the summary line of a fixed point
 CAPTIONS = {
-    "exponents": "Followed exponents against the order; bands are extrapolated values with their errors.",
+    "exponents": "Followed exponents against the order; open signs and bands at infinite order are extrapolated values "
+                 "with their errors.",
     "relevant-count": "Number of relevant directions of the tracked fixed point against the order.",
-    "landscape": "All fixed points found at every order by their leading exponent; the tracked one is highlighted.",
-    "growth": "Exponents in the order in which operators enter, against their canonical values.",
-    "potential": "Fixed-point potential and slope at the last order.",
-    "eigenfunctions": "Leading eigenperturbations of the potential at the last order.",
+    "landscape": "All fixed points found at every order by leading exponent and first coupling; diamonds: the "
+                 "tracked one.",
+    "growth": "Exponents in the order in which operators enter, against their canonical values, and the fitted line.",
+    "potential": "Fixed-point potential and its slope at the last order.",
+    "eigenfunctions": "Leading eigenfunctions of the potential at the last order.",
 }
 
 
@@ -34,18 +40,18 @@ def render_report(run: Run) -> str:
         resources.files("frg.show").joinpath("report.html").read_text(encoding="utf-8")
     )
     inputs = run.inputs
-    values = ", ".join(f"{k} = {v:g}" for k, v in inputs.regulator_parameters.items())
     return template.render(
         run=run,
-        regulator=inputs.regulator + (f" ({values})" if values else ""),
+        regulator=_regulator(run),
         parameters=", ".join(f"{k} = {v}" for k, v in inputs.parameters.items()),
         exponents=exponent_lines(run.verdict) if run.verdict else [],
         rows=study_rows(run) if run.tracks or len(run.steps) > 1 else [],
-        pictures=[{"svg": _svg(figure), "caption": CAPTIONS[name]} for name, figure in all_figures(run)],
+        pictures=_pictures(run),
         equations=_equations(run),
         steps=[{"title": _step_title(s), "text": _step_text(s)} for s in run.steps],
-        tracks=[track_line(run, t) + "".join(f"; {n}" for n in t.notes) for t in run.tracks],
+        tracks=[track_line(run, t) + "".join(f"; {n}" for n in t.notes) for t in run.tracks if len(t.steps)],
         rule=run.tracks[0].rule if run.tracks else "",
+        cautioned=run.verdict is not None and any("not proof" in r for r in run.verdict.reasons),
         provenance=_provenance(run),
         settings=json.dumps(inputs.settings, indent=1, default=str),
     )
@@ -74,38 +80,70 @@ def _umask() -> int:
     return current
 
 
-def _svg(figure: Any) -> str:
-    buffer = io.StringIO()
-    save_plot(figure, buffer)
-    text = buffer.getvalue()
-    return text[text.index("<svg") :]
+def _pictures(run: Run) -> list[dict[str, str]]:
+    pictures = []
+    for name, figure in all_figures(run):
+        buffer = io.StringIO()
+        save_plot(figure, buffer)
+        text = buffer.getvalue()
+        pictures.append({"svg": _inline(text[text.index("<svg") :], name, CAPTIONS[name]), "caption": CAPTIONS[name]})
+    return pictures
 
 
-def _equations(run: Run) -> list[dict[str, str | None]]:
-    latex, plain = run.inputs.latex.splitlines(), run.inputs.equations.splitlines()
-    padded = latex + [""] * (len(plain) - len(latex))
-    return [
-        {"svg": equation_svg(line) if line else None, "text": text} for line, text in zip(padded, plain, strict=False)
-    ]
+def _inline(svg: str, prefix: str, label: str | None = None) -> str:
+    """A picture as part of a page: without its metadata, with names that no other picture on the page has, and with
+    `label` read out in its place (None hides it from readers aloud)."""
+    text = re.sub(r"<metadata>.*?</metadata>\s*", "", svg, flags=re.DOTALL)
+    text = re.sub(r'((?:\sid="|href="#|url\(#))', lambda m: f"{m.group(1)}{prefix}-", text)
+    role = 'aria-hidden="true"' if label is None else f'role="img" aria-label="{html.escape(label)}"'
+    return text.replace("<svg ", f"<svg {role} ", 1)
+
+
+def _equations(run: Run) -> list[dict[str, Any]]:
+    """One entry an equation: its rows as pictures, or none where it stays text."""
+    entries = []
+    lines = zip_longest(run.inputs.latex.splitlines(), run.inputs.equations.splitlines(), fillvalue="")
+    for i, (latex, plain) in enumerate(lines):
+        rows = equation_rows(latex) if latex.strip() else None
+        pictures = [_inline(row, f"equation-{i}-{j}") for j, row in enumerate(rows or [])]
+        if latex.strip() or plain.strip():
+            entries.append({"rows": pictures, "text": plain or latex})
+    return entries
 
 
 def _step_title(step: Step) -> str:
     order = ", ".join(f"{k} = {v}" for k, v in step.order.items()) or "the only step"
-    return f"{order}: {step.outcome.word}, {len(step.fixed_points)} fixed point(s), {step.seconds:.2g} s"
+    count = len(step.fixed_points)
+    return f"{order}: {step.outcome.word}, {count} fixed point{'' if count == 1 else 's'}, {step.seconds:.2g} s"
 
 
 def _step_text(step: Step) -> str:
-    lines = [line for p in step.fixed_points for line in (*point_lines(p), "")]
+    lines = [line for p in step.fixed_points for line in (*point_lines(p), *_rest_of(p), "")]
     if not step.fixed_points:
         lines.append(step.outcome.value)
-    lines.append("search: " + ", ".join(f"{v} {k}" for k, v in step.search.items()))
+    if step.search:
+        lines.append("search: " + ", ".join(f"{v} {k}" for k, v in step.search.items()))
     lines += [f"note: {n}" for n in step.notes]
     return "\n".join(lines)
+
+
+def _rest_of(point: FixedPoint) -> list[str]:
+    """All couplings of a point that has more than the summary shows."""
+    if len(point.names) <= SUMMARISED:
+        return []
+    return ["   all        " + ", ".join(f"{n} = {c:.10g}" for n, c in zip(point.names, point.couplings, strict=True))]
+
+
+def _regulator(run: Run) -> str:
+    values = ", ".join(f"{k} = {v:g}" for k, v in run.inputs.regulator_parameters.items())
+    return run.inputs.regulator + (f" ({values})" if values else "")
 
 
 def _provenance(run: Run) -> list[tuple[str, str]]:
     packages = ", ".join(f"{k} {v}" for k, v in run.packages.items())
     return [
+        ("regulator", _regulator(run)),
+        ("parameters", ", ".join(f"{k} = {v}" for k, v in run.inputs.parameters.items()) or "none"),
         ("command", run.command), ("created", run.created_utc), ("frg", run.frg_version), ("with", packages),
         ("signature", run.inputs.signature),
     ]
