@@ -215,7 +215,9 @@ def draw_slope(point: FixedPoint, ax: Axes | None = None) -> Axes:
     profile = _profile(point)
     ax.plot(profile.x, profile.slope, linestyle=LINES[1], color=VERMILION, linewidth=1.3)
     ax.axhline(0, color=BLACK, linewidth=0.6)
-    ax.set(xlabel=_coordinate(profile.x_label), ylabel=r"slope $u'$")
+    # written out: with text kept as text, the prime of the formula font shows as a zero elsewhere
+    name = GREEK.get(profile.x_label, plain(profile.x_label))
+    ax.set(xlabel=_coordinate(profile.x_label), ylabel=rf"slope $\mathrm{{d}}u/\mathrm{{d}}${name}")
     ax.ticklabel_format(axis="y", scilimits=(-2, 3), useMathText=True)
     return ax
 
@@ -324,13 +326,13 @@ def all_figures(run: Run) -> list[tuple[str, Figure]]:
             add("relevant-count", draw_counts, run)
     if len(run.steps) > 1 and any(s.fixed_points for s in run.steps):
         found.append(("landscape", landscape_figure(run)))
-    if verdict is not None and verdict.growth is not None:
-        add("growth", draw_growth, verdict.growth)
     point = shown_point(run)
     if point is not None and point.profile is not None and len(point.profile.x):
         found.append(("potential", potential_figure(point)))
         if len(point.profile.eigenfunctions) and len(point.theta):
             add("eigenfunctions", draw_eigenfunctions, point)
+    if verdict is not None and verdict.growth is not None:
+        add("growth", draw_growth, verdict.growth)
     return found
 
 
