@@ -7,11 +7,14 @@ import re
 from typing import Any
 
 SIZE = 14.0  # points
+LONGEST = 20_000  # characters: longer ones are no longer read as formulas, and would take minutes to set
 
 
 def equation_rows(latex: str) -> list[str] | None:
     """One equation as inline SVG pictures, one a row, broken at top-level signs where it is long; None where the
     typesetter does not understand it. The ink has no colour of its own: the page sets it by `fill`."""
+    if len(latex) > LONGEST:
+        return None
     try:
         return [_picture(f"${row}$") for row in broken(simplified(latex))]
     except (ValueError, RuntimeError, RecursionError):

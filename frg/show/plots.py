@@ -137,13 +137,13 @@ def draw_counts(run: Run, ax: Axes | None = None) -> Axes:
     ax = _axes(ax)
     if run.verdict is None:
         raise ValueError("a run without a verdict has no counts to draw")
-    orders = [next(iter(s.order.values()), i) for i, s in enumerate(run.steps)]
-    counts = np.array(run.verdict.counts, dtype=float)
+    counts = np.array(run.verdict.counts[: len(run.steps)], dtype=float)
+    orders = np.array([next(iter(s.order.values()), i) for i, s in enumerate(run.steps[: len(counts)])])
     found = counts >= 0
-    ax.step(np.array(orders)[found], counts[found], where="mid", color=BLUE, linewidth=1)
-    ax.plot(np.array(orders)[found], counts[found], "o", color=BLUE, markersize=4, label="tracked fixed point")
+    ax.step(orders[found], counts[found], where="mid", color=BLUE, linewidth=1)
+    ax.plot(orders[found], counts[found], "o", color=BLUE, markersize=4, label="tracked fixed point")
     if (~found).any():
-        ax.plot(np.array(orders)[~found], np.zeros((~found).sum()), "x", color=VERMILION, label="not found")
+        ax.plot(orders[~found], np.zeros((~found).sum()), "x", color=VERMILION, label="not found")
         ax.legend(frameon=False)
     top = float(counts.max(initial=1))
     ax.set(xlabel=order_label(run), ylabel="relevant directions", ylim=(-0.2, top + 1))
