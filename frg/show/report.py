@@ -18,7 +18,7 @@ from frg.show.equations import equation_rows
 from frg.show.plots import all_figures, save_plot
 from frg.show.tables import exponent_lines, point_lines, study_rows, track_line
 
-SUMMARISED = 5  # couplings in the summary line of a fixed point
+COUPLINGS = "   couplings  "  # how the summary of a fixed point begins the line of its couplings
 CAPTIONS = {
     "exponents": "Followed exponents against the order; open signs and bands at infinite order are extrapolated values "
                  "with their errors.",
@@ -118,7 +118,7 @@ def _step_title(step: Step) -> str:
 
 
 def _step_text(step: Step) -> str:
-    lines = [line for p in step.fixed_points for line in (*point_lines(p), *_rest_of(p), "")]
+    lines = [line for p in step.fixed_points for line in (*_full_lines(p), "")]
     if not step.fixed_points:
         lines.append(step.outcome.value)
     if step.search:
@@ -127,11 +127,10 @@ def _step_text(step: Step) -> str:
     return "\n".join(lines)
 
 
-def _rest_of(point: FixedPoint) -> list[str]:
-    """All couplings of a point that has more than the summary shows."""
-    if len(point.names) <= SUMMARISED:
-        return []
-    return ["   all        " + ", ".join(f"{n} = {c:.10g}" for n, c in zip(point.names, point.couplings, strict=True))]
+def _full_lines(point: FixedPoint) -> list[str]:
+    """The summary of a point, with every coupling where the terminal leaves some out."""
+    couplings = ", ".join(f"{n} = {c:.10g}" for n, c in zip(point.names, point.couplings, strict=True))
+    return [COUPLINGS + couplings if line.startswith(COUPLINGS) else line for line in point_lines(point)]
 
 
 def _regulator(run: Run) -> str:
