@@ -7,16 +7,18 @@ import re
 from typing import Any
 
 SIZE = 14.0  # points
+WIDEST = 60  # visible characters of a bracket or of one half of a fraction
 LONGEST = 20_000  # characters: longer ones are no longer read as formulas, and would take minutes to set
 
 
 def equation_rows(latex: str) -> list[str] | None:
-    """One equation as inline SVG pictures, one a row, broken at top-level signs where it is long; None where the
-    typesetter does not understand it. The ink has no colour of its own: the page sets it by `fill`."""
+    """One equation as inline SVG pictures, one a row, broken at top-level signs where it is long, with letters for
+    what is too long to be broken so; None where the typesetter does not understand it. The ink has no colour of its
+    own: the page sets it by `fill`."""
     if len(latex) > LONGEST:
         return None
     try:
-        return [_picture(f"${row}$") for row in broken(simplified(latex))]
+        return [_picture(f"${row}$") for part in abbreviated(latex) for row in broken(simplified(part))]
     except (ValueError, RuntimeError, RecursionError):
         return None
 
@@ -45,6 +47,46 @@ def simplified(latex: str) -> str:
     # the typesetter draws a plain apostrophe as a dot: write primes out as superscripts
     text = re.sub(r"([A-Za-z}])('+)(\^\{(\w+)\})?", _primes, text)
     return re.sub(r"\\text\{([^}]*)\}", lambda m: r"\mathrm{" + m.group(1).replace(" ", r"\ ") + "}", text)
+
+
+def abbreviated(latex: str) -> list[str]:
+    """The equation, followed by the equations of the script letters put for its long brackets, and for long
+    numerators and denominators: neither can be broken over rows. Inserting them gives back the equation."""
+    parts, done = [latex], 0
+    letters = (rf"\mathcal{{{c}}}" for c in "ABCDEFGHIJKLMNOPQRSTUVWXYZ")
+    while done < len(parts):
+        found = _longest_pair(parts[done])
+        letter = next(letters, None) if found else None
+        if found is None or letter is None:
+            done += 1
+            continue
+        start, end, inner = found
+        parts.append(f"{letter} = {inner}")
+        parts[done] = parts[done][:start] + letter + parts[done][end:]
+    return parts
+
+
+def _longest_pair(latex: str) -> tuple[int, int, str] | None:
+    """(start, end, content) of the longest bracket that is too long, or else of such a numerator or denominator."""
+    brackets, arguments = [], []
+    opened: list[tuple[str, int]] = []
+    closed = ""
+    for token in re.finditer(r"\\left\(|\\right\)|\\frac\{|[{}]", latex):
+        text = token.group()
+        if text in (r"\left(", r"\frac{", "{"):
+            # a brace right behind a numerator opens the denominator
+            kind = r"\frac{" if text == "{" and latex[: token.start()].endswith("}") and closed == r"\frac{" else text
+            opened.append((kind, token.end()))
+            continue
+        if not opened:
+            return None
+        closed, start = opened.pop()
+        inner = latex[start : token.start()]
+        if _visible(inner) > WIDEST and closed == r"\left(":
+            brackets.append((start - len(r"\left("), token.end(), inner))
+        elif _visible(inner) > WIDEST and closed == r"\frac{":
+            arguments.append((start, token.start(), inner))
+    return max(brackets or arguments, key=lambda found: len(found[2]), default=None)
 
 
 def _primes(match: re.Match[str]) -> str:

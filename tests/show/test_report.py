@@ -16,7 +16,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from frg.records import Run
-from frg.show.equations import LONGEST, broken, equation_rows
+from frg.show.equations import LONGEST, abbreviated, broken, equation_rows
 from frg.show.report import render_report, write_report
 
 VOID = {"meta", "br", "hr", "img", "input", "link"}
@@ -176,6 +176,24 @@ def test_long_equations_are_broken_at_signs_outside_of_brackets():
     assert all(row.startswith("+") for row in rows[1:])
     assert all(row.count(r"\left") == row.count(r"\right") for row in rows)
     assert broken("y = - a + b") == ["y = - a + b"]
+
+
+def test_letters_stand_for_what_is_too_long_to_break():
+    total = " + ".join(f"a_{{{i}}} b c d" for i in range(30))
+    latex = rf"y = x + \frac{{2 \left(p + \frac{{q}}{{{total}}}\right)^{{2}} \left({total}\right)}}{{d}} - \left(d - 2\right)"
+    parts = abbreviated(latex)
+    assert len(parts) == 4
+    assert len(parts[0]) < 150 and r"\left(d - 2\right)" in parts[0]
+    whole = parts[0]
+    for part in parts[1:]:
+        letter, inner = part.split(" = ", 1)
+        assert whole.count(letter) == 1
+        bracket = rf"\left({inner}\right)"
+        whole = whole.replace(f"{{{letter}}}", f"{{{inner}}}").replace(letter, bracket)
+    assert whole == latex
+    assert all(len(row) < 400 for part in parts for row in broken(part))
+    assert abbreviated(LATEX.splitlines()[0]) == [LATEX.splitlines()[0]]
+    assert equation_rows(latex) is not None
 
 
 @given(st.text(alphabet=r"ab+-={}()[]^_' \leftrightfrac", max_size=200), st.integers(1, 80))
