@@ -292,7 +292,7 @@ def potential_figure(point: FixedPoint) -> Figure:
     """Potential and slope of a fixed point. Raises ValueError where it has no curves."""
     figure, above, below = new_panels()
     draw_potential(point, above).set_xlabel("")
-    draw_slope(point, below)
+    draw_slope(point, below).locator_params(axis="x", nbins=6)
     figure.align_ylabels()
     return figure
 

@@ -15,7 +15,7 @@ from typing import Any
 
 from frg.records import FixedPoint, Run, Step
 from frg.show.equations import equation_rows
-from frg.show.plots import all_figures, save_plot
+from frg.show.plots import all_figures, save_plot, shown_point
 from frg.show.tables import exponent_lines, point_lines, study_rows, track_line
 
 COUPLINGS = "   couplings  "  # how the summary of a fixed point begins the line of its couplings
@@ -26,8 +26,8 @@ CAPTIONS = {
     "landscape": "All fixed points found at every order by leading exponent and first coupling; diamonds: the "
                  "tracked one.",
     "growth": "Exponents in the order in which operators enter, against their canonical values, and the fitted line.",
-    "potential": "Fixed-point potential and its slope at the last order.",
-    "eigenfunctions": "Leading eigenfunctions of the potential at the last order.",
+    "potential": "Potential and slope at fixed point {point}.",
+    "eigenfunctions": "Leading eigenfunctions of the potential at fixed point {point}.",
 }
 
 
@@ -81,12 +81,15 @@ def _umask() -> int:
 
 
 def _pictures(run: Run) -> list[dict[str, str]]:
+    point = shown_point(run)
+    label = "" if point is None else point.label + (" (the tracked one, at the last order)" if run.tracks else "")
     pictures = []
     for name, figure in all_figures(run):
+        caption = CAPTIONS[name].replace("{point}", label)
         buffer = io.StringIO()
         save_plot(figure, buffer)
         text = buffer.getvalue()
-        pictures.append({"svg": _inline(text[text.index("<svg") :], name, CAPTIONS[name]), "caption": CAPTIONS[name]})
+        pictures.append({"svg": _inline(text[text.index("<svg") :], name, caption), "caption": caption})
     return pictures
 
 

@@ -131,6 +131,8 @@ def test_pictures_have_words_for_those_who_do_not_see_them():
     page = Page(render_report(study()))
     labels = [v for t, n, v in page.attributes if t == "svg" and n == "aria-label"]
     assert len(labels) == page.tags["figure"] == 6 and all(labels) and len(set(labels)) == 6
+    assert "Potential and slope at fixed point A (the tracked one, at the last order)." in labels
+    assert "Potential and slope at fixed point A." in Page(render_report(solved())).text
     equations = [v for t, n, v in page.attributes if t == "div" and n == "aria-label"]
     assert equations == EQUATIONS.splitlines()
 
@@ -138,7 +140,7 @@ def test_pictures_have_words_for_those_who_do_not_see_them():
 def test_text_from_strangers_never_becomes_markup():
     run = study()
     point = replace(run.steps[0].fixed_points[0], label=HOSTILE, names=(HOSTILE, "b"), notes=(HOSTILE,),
-                    landmarks={HOSTILE: 1.0}, eta={HOSTILE: 0.5}, profile=None)
+                    landmarks={HOSTILE: 1.0}, eta={HOSTILE: 0.5})
     step = replace(run.steps[0], order={HOSTILE: 2}, fixed_points=(point,), search={HOSTILE: 1}, notes=(HOSTILE,))
     track = replace(run.tracks[0], steps=run.tracks[0].steps[:1], points=run.tracks[0].points[:1],
                     theta=run.tracks[0].theta[:1], label=HOSTILE, rule=HOSTILE, notes=(HOSTILE,))
