@@ -22,6 +22,7 @@ from frg.store.base import AbstractStore
 from frg.study.convergence import ConvergenceStudy, StudySettings, convergence_study
 
 DONE, FAILED, INTERRUPTED = 0, 1, 130
+HIGHEST_POWER = 170  # 171! is beyond the largest 64-bit float
 
 
 def run(options: Any, given: Sequence[str]) -> int:
@@ -171,10 +172,17 @@ def _has_order(problem: Problem) -> bool:
 
 
 def check_orders(orders: Sequence[int], problem: Problem) -> None:
-    """Every function keeps at least one coupling at every order. Raises InputError."""
+    """Every function keeps at least one coupling at every order, and factorials stay representable.
+    Raises InputError."""
     for function in problem.truncation.functions:
         for order in orders:
-            problem.truncation.order_of(function, order)
+            power = problem.truncation.order_of(function, order)
+            if power is not None and power > HIGHEST_POWER:
+                raise InputError(
+                    f"order {order} keeps the power {power} of {function.name}: 64-bit floats cannot hold {power}!",
+                    remedy=f"stay at powers up to {HIGHEST_POWER}, or solve the whole function on a grid",
+                    place=Place(source=problem.truncation.source),
+                )
 
 
 # ---- converge --------------------------------------------------------------------------------

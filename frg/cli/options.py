@@ -27,8 +27,9 @@ committed is kept)."""
 
 
 def build_parser() -> argparse.ArgumentParser:
+    # no abbreviations: `converge --order 4` must not be read as --orders 4
     parser = argparse.ArgumentParser(
-        prog="frg", description=DESCRIPTION, epilog=EPILOG,
+        prog="frg", allow_abbrev=False, description=DESCRIPTION, epilog=EPILOG,
         formatter_class=argparse.RawDescriptionHelpFormatter,
     )
     parser.add_argument("--version", action="version", version=f"frg {__version__}")
@@ -45,7 +46,8 @@ def build_parser() -> argparse.ArgumentParser:
 
 def _command(commands, name: str, summary: str, description: str) -> argparse.ArgumentParser:  # type: ignore[no-untyped-def]
     return commands.add_parser(
-        name, help=summary, description=description, formatter_class=argparse.RawDescriptionHelpFormatter
+        name, help=summary, description=description, allow_abbrev=False,
+        formatter_class=argparse.RawDescriptionHelpFormatter,
     )
 
 
@@ -59,9 +61,12 @@ def _problem(parser: argparse.ArgumentParser) -> None:
     parser.add_argument("--json", action="store_true", help="print one JSON object on stdout and nothing else")
 
 
-def _keeping(parser: argparse.ArgumentParser) -> None:
-    parser.add_argument("--save", metavar="PATH", help="run file (ending in .h5) or folder to keep the run in (default: runs/)")
-    parser.add_argument("--no-save", action="store_true", help="keep nothing")
+def _keeping(parser: argparse.ArgumentParser, *, resume: bool = False) -> None:
+    where = parser.add_mutually_exclusive_group()
+    where.add_argument("--save", metavar="PATH", help="run file (ending in .h5) or folder to keep the run in (default: runs/)")
+    where.add_argument("--no-save", action="store_true", help="keep nothing")
+    if resume:
+        where.add_argument("--resume", metavar="RUN", help="go on with an interrupted run of the same inputs")
     parser.add_argument("--quiet", action="store_true", help="no progress, no tables; errors only")
 
 
@@ -94,9 +99,8 @@ def _converge(commands) -> None:  # type: ignore[no-untyped-def]
     parser.add_argument("--orders", metavar="A..B",
                         help="orders to study, for example 2..12 or 2..20:2 (default: those of the file)")
     parser.add_argument("--all", action="store_true", help="search harder at every order")
-    parser.add_argument("--resume", metavar="RUN", help="go on with an interrupted run of the same inputs")
     parser.add_argument("--no-report", action="store_true", help="do not write the HTML report and the plot beside the run")
-    _keeping(parser)
+    _keeping(parser, resume=True)
 
 
 def _stored(commands) -> None:  # type: ignore[no-untyped-def]
@@ -105,10 +109,11 @@ def _stored(commands) -> None:  # type: ignore[no-untyped-def]
     runs.add_argument("--json", action="store_true", help="print one JSON object on stdout and nothing else")
     show = _command(commands, "show", "print a stored run", "Prints the tables and the verdict of a stored run.")
     _run_argument(show)
-    show.add_argument("--step", type=int, metavar="I", help="the fixed points of one step, counted from 0")
-    show.add_argument("--latex", action="store_true", help="the study table as LaTeX")
-    show.add_argument("--csv", action="store_true", help="the study table as CSV")
-    show.add_argument("--json", action="store_true", help="print one JSON object on stdout and nothing else")
+    form = show.add_mutually_exclusive_group()
+    form.add_argument("--step", type=int, metavar="I", help="the fixed points of one step, counted from 0")
+    form.add_argument("--latex", action="store_true", help="the study table as LaTeX")
+    form.add_argument("--csv", action="store_true", help="the study table as CSV")
+    form.add_argument("--json", action="store_true", help="print one JSON object on stdout and nothing else")
     check = _command(commands, "check", "check a stored run",
                      "Checks that a run file is whole and consistent, then evaluates every stored fixed point afresh from "
                      "the stored\ntruncation text: residuals, exponents, counts.")
@@ -119,6 +124,7 @@ def _stored(commands) -> None:  # type: ignore[no-untyped-def]
     _run_argument(report)
     report.add_argument("--output", metavar="PATH", help="where to write it (default: beside the run file)")
     report.add_argument("--plots", metavar="FOLDER", help="also write every picture there, as SVG and PDF")
+    report.add_argument("--json", action="store_true", help="print one JSON object on stdout and nothing else")
 
 
 def _run_argument(parser: argparse.ArgumentParser) -> None:

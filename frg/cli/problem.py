@@ -50,16 +50,23 @@ def problem_from_run(inputs: Inputs) -> Problem:
     truncation = read_truncation_text(
         inputs.truncation_text, source=f"truncation stored in the run {inputs.title!r}", overrides=inputs.parameters
     )
-    return problem_of(truncation, regulator_spec(inputs.regulator, inputs.regulator_parameters))
+    spec = regulator_spec(inputs.regulator, inputs.regulator_parameters)
+    return problem_of(truncation, spec, origin=f"regulator stored in the run {inputs.title!r}")
 
 
-def problem_of(truncation: Truncation, regulator: str | None) -> Problem:
+def problem_of(truncation: Truncation, regulator: str | None, *, origin: str = "--regulator") -> Problem:
+    """The problem with the regulator of the file, or with another one; `origin` says in errors where the
+    text of that one came from. Raises InputError."""
     from frg.language.values import regulator_choice_from_text
 
-    choice = truncation.regulator
+    choice, place = truncation.regulator, Place(source=truncation.source)
     if regulator is not None:
-        choice = regulator_choice_from_text(regulator)
-    built = build_regulator(choice)
+        place = Place(source=origin, text=regulator)
+        choice = regulator_choice_from_text(regulator, place=place)
+    try:
+        built = build_regulator(choice)
+    except InputError as error:
+        raise error.at(place) from None
     return Problem(truncation=truncation, regulator=built, equations=derive_flow(truncation, built))
 
 

@@ -85,7 +85,7 @@ def _check(options: Any) -> int:
     path = find_run(options.run, options.folder)
     report = check_run(path)
     checks = [(c.name, c.passed, c.detail) for c in report.checks]
-    if report.run is not None and report.ok:
+    if report.run is not None:  # also where something failed already: recomputing tells which fixed point
         checks += recheck(report.run)
     sound = all(passed is not False for _, passed, _ in checks)
     if options.json:
@@ -106,12 +106,14 @@ def _report(options: Any) -> int:
     target = Path(options.output) if options.output else path.with_suffix(".html")
     try:
         write_report(stored, target)
-        print(f"wrote {target}")
-        if options.plots:
-            for written in _write_plots(stored, Path(options.plots), path.stem):
-                print(f"wrote {written}")
+        written = [target, *(_write_plots(stored, Path(options.plots), path.stem) if options.plots else [])]
     except OSError as error:
         raise StoreError(f"{error.filename or target}: {error.strerror}", remedy="choose another place") from None
+    if options.json:
+        body = {"frg": __version__, "command": "report", "run": str(path), "wrote": [str(w) for w in written]}
+        print(json.dumps(body))
+    else:
+        print("\n".join(f"wrote {w}" for w in written))
     return DONE
 
 

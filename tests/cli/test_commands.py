@@ -117,21 +117,60 @@ def test_runs_show_report_and_truncations(shell, shelf: Path, tmp_path: Path) ->
     assert shell("equations", "ising_lpa") == 0  # by name, from the shelf
 
 
-def test_check_detects_what_was_changed(shell, shelf: Path, tmp_path: Path) -> None:
-    assert shell("converge", shelf / "ising_lpa.toml", "--orders", "2..4", "--save", "sound.h5", "--quiet") == 0
-    assert shell("check", "sound.h5") == 0 and "sound" in shell.out
-    for number, (name, index, change) in enumerate(
-        [("couplings", 0, 1.001), ("theta", 0, 1.0001), ("theta", 1, 1.5)]
-    ):
-        copy = tmp_path / f"changed{number}.h5"
-        copy.write_bytes((tmp_path / "sound.h5").read_bytes())
-        with h5py.File(copy, "r+") as file:
-            data = file[f"steps/0001/fixed_points/0/{name}"]
-            values = data[()]
-            values[index] *= change
-            data[...] = values
-        assert shell("check", copy) == 1
-        assert "NOT sound" in shell.out
+def change_couplings(point: h5py.Group) -> None:
+    values = point["couplings"][()]
+    values[0] *= 1.001
+    point["couplings"][...] = values
+
+
+def change_leading_exponent(point: h5py.Group) -> None:
+    values = point["theta"][()]
+    values[0] *= 1.0001
+    point["theta"][...] = values
+
+
+def change_correction_exponent(point: h5py.Group) -> None:
+    values = point["theta"][()]
+    values[1] *= 1.5
+    point["theta"][...] = values
+
+
+def change_count(point: h5py.Group) -> None:
+    point.attrs["relevant"] = int(point.attrs["relevant"]) + 1
+
+
+def change_residual(point: h5py.Group) -> None:
+    point.attrs["residual"] = 1e-3
+
+
+@pytest.fixture(scope="module")
+def sound(shelf: Path, tmp_path_factory) -> Path:
+    path = tmp_path_factory.mktemp("sound") / "sound.h5"
+    from frg.cli.main import main
+
+    assert main(["converge", str(shelf / "ising_lpa.toml"), "--orders", "2..4", "--save", str(path), "--quiet"]) == 0
+    return path
+
+
+def test_a_sound_run_passes_its_check(shell, sound: Path) -> None:
+    assert shell("check", sound) == 0
+    assert "FAILED" not in shell.out and shell.out.endswith("sound.h5: sound\n")
+    assert "exponents recomputed at" in shell.out
+
+
+@pytest.mark.parametrize(
+    "change", [change_couplings, change_leading_exponent, change_correction_exponent, change_count, change_residual]
+)
+def test_check_names_the_fixed_point_that_was_changed(shell, sound: Path, tmp_path: Path, change) -> None:
+    copy = tmp_path / "changed.h5"
+    copy.write_bytes(sound.read_bytes())
+    with h5py.File(copy, "r+") as file:
+        change(file["steps/0001/fixed_points/0"])
+    assert shell("check", copy) == 1
+    failed = [line for line in shell.out.splitlines() if line.startswith("FAILED")]
+    label = read_run(sound).steps[1].fixed_points[0].label
+    assert any(f"step 1, {label}" in line or f"step 1, fixed point {label}" in line for line in failed), shell.out
+    assert "NOT sound" in shell.out
 
 
 @pytest.mark.parametrize(
@@ -149,7 +188,27 @@ def test_check_detects_what_was_changed(shell, shelf: Path, tmp_path: Path) -> N
         (["solve", "{shelf}/ising_lpa_grid.toml", "--order", "3"], "--order"),
         (["solve", "{shelf}/ising_lpa_prime.toml", "--regulator", "sharp"], "sharp"),
         (["solve", "{shelf}/ising_lpa.toml", "--set", "d=4", "--regulator", "mass"], "diverges"),
+        (["solve", "{shelf}/ising_lpa.toml", "--order", "-3"], "no coupling"),
+        (["solve", "{shelf}/ising_lpa.toml", "--order", "171"], "170"),
+        (["solve", "{shelf}/ising_lpa.toml", "--set", "d=1/0"], "division by zero"),
+        (["solve", "{shelf}/ising_lpa.toml", "--set", "d=9^9^9^9"], "exponent"),
+        (["solve", "{shelf}/ising_lpa.toml", "--set", "d=-1"], "dimension"),
+        (["solve", "{shelf}/ising_lpa.toml", "--set", "d="], "NAME=VALUE"),
+        (["solve", "{shelf}/ising_lpa.toml", "--regulator", "custom:__import__('os')"], "--regulator"),
+        (["equations", "{tmp}/broken.toml"], "broken.toml:3"),
+        (["equations", "{tmp}/latin.toml"], "latin.toml"),
+        (["equations", "{tmp}/empty.toml"], "empty.toml"),
+        (["equations", "{tmp}/huge.toml"], "huge.toml"),
         (["converge", "{shelf}/ising_lpa.toml", "--orders", "2..x"], "orders"),
+        (["converge", "{shelf}/ising_lpa.toml", "--orders", "5..2"], "2..5"),
+        (["converge", "{shelf}/ising_lpa.toml", "--orders", "2..1000000"], "--orders"),
+        (["converge", "{shelf}/ising_lpa.toml", "--orders", "2..8:0"], "step"),
+        (["converge", "{shelf}/ising_lpa.toml", "--orders", "1..3"], "no coupling"),
+        (["converge", "{shelf}/ising_lpa.toml", "--orders", "2..171"], "170"),
+        (["converge", "{shelf}/ising_lpa.toml", "--resume", "{file}"], "not an HDF5 file"),
+        (["show", "{file}"], "not an HDF5 file"),
+        (["show", "."], "no run"),
+        (["runs", "--folder", "{file}"], "file"),
         (["converge", "{shelf}/ising_lpa_grid.toml"], "order"),
         (["converge", "{shelf}/ising_lpa.toml", "--resume", "nowhere"], "nowhere"),
         (["show", "nothing"], "nothing"),
@@ -160,7 +219,35 @@ def test_check_detects_what_was_changed(shell, shelf: Path, tmp_path: Path) -> N
 )
 def test_bad_input_is_one_message_and_exit_code_two(shell, shelf: Path, tmp_path: Path, arguments, words: str) -> None:
     (tmp_path / "file").write_text("not a folder")
-    filled = [a.format(shelf=shelf, file=tmp_path / "file") for a in arguments]
+    (tmp_path / "broken.toml").write_text('title = "cut off"\n[space]\ndimension = \n')
+    (tmp_path / "latin.toml").write_bytes('title = "Flussgleichung f\xfcr rho"\n'.encode("latin-1"))
+    (tmp_path / "empty.toml").write_text("")
+    with open(tmp_path / "huge.toml", "wb") as file:
+        file.truncate(2**30)
+    filled = [a.format(shelf=shelf, file=tmp_path / "file", tmp=tmp_path) for a in arguments]
     assert shell(*filled, *([] if arguments[0] != "solve" or "--save" in arguments else ["--no-save"])) == 2
     assert shell.out == ""
-    assert words in shell.err and "remedy:" in shell.err and "Traceback" not in shell.err
+    assert words in shell.err and "Traceback" not in shell.err
+    assert shell.err.startswith("frg: ") and shell.err.count("frg: ") == shell.err.count("remedy: ") == 1
+    assert not (tmp_path / "runs").exists()
+
+
+@pytest.mark.parametrize(
+    "arguments",
+    [
+        ["converge", "x.toml", "--order", "4"],  # no abbreviation of --orders
+        ["converge", "x.toml", "--resume", "r", "--no-save"],
+        ["converge", "x.toml", "--resume", "r", "--save", "s.h5"],
+        ["solve", "x.toml", "--save", "s.h5", "--no-save"],
+        ["solve", "x.toml", "--order", "four"],
+        ["show", "r", "--json", "--latex"],
+        ["solve"],
+        ["no-such-command"],
+    ],
+)
+def test_arguments_that_make_no_sense_are_exit_code_two(shell, capsys, arguments: list[str]) -> None:
+    with pytest.raises(SystemExit) as done:
+        shell(*arguments)
+    assert done.value.code == 2
+    out, err = capsys.readouterr()
+    assert out == "" and "error:" in err and "Traceback" not in err
