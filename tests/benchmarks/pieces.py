@@ -82,60 +82,70 @@ def newton_starts(path: Path) -> dict[str, float]:
 
 
 def throughput(path: Path) -> dict[str, Any]:
-    """Genuine roots reached a second, orders 2..10, by frg and by the alternative, from the same starts."""
-    import alternative
-
+    """Genuine roots reached a second, orders 2..10, by frg and by the alternatives, from the same starts."""
     begun = time.perf_counter()
     search = polynomial_search(path, COMPARED)
     newton = BatchNewton(flow=search.flow, newton=search.settings.newton, batch=BATCH, known=1)
-    none = np.zeros((0, search.flow.size))
-    newton.run(np.zeros((1, search.flow.size)), search.flow.active(2), search.args, none)
+    newton.run(np.zeros((1, search.flow.size)), search.flow.active(2), search.args, np.zeros((0, search.flow.size)))
     prepared = time.perf_counter() - begun
-    scale = np.asarray(search.args.scale)
-    rows = []
-    for order in COMPARED:
-        active = search.flow.active(order)
-        starts = search._random(np.random.default_rng([3, order]), 4 * BATCH, active)
-        begun = time.perf_counter()
-        landing = newton.run(starts, active, search.args, none)
-        seconds = time.perf_counter() - begun
-        begun = time.perf_counter()
-        newton.run(starts[:STARTS_COMPARED], active, search.args, none)
-        same_seconds = time.perf_counter() - begun
-        derived = alternative.derive(order)
-        reached = alternative.in_loop_units((landing.unknowns * scale)[:, active])
-        converged = sum(derived.accepts(g) for g in reached)
-        given = alternative.in_loop_units((starts[:STARTS_COMPARED] * scale)[:, active])
-        by_jacobian = {
-            exact: alternative.search(derived, given, exact_jacobian=exact) for exact in (True, False)
-        }
-        best = max(by_jacobian.values(), key=lambda s: s.converged / s.seconds)
-        rows.append({
-            "order": order, "frg starts": len(starts), "frg converged": converged, "frg seconds": seconds,
-            "frg seconds for the same starts": same_seconds,
-            "alternative starts": best.starts, "alternative converged": best.converged,
-            "alternative seconds": best.seconds,
-            "alternative derivation": derived.seconds, "alternative Jacobian": derived.jacobian_seconds,
-            "alternative had exact Jacobian": best is by_jacobian[True],
-            "alternative derive and solve": derived.seconds + min(
-                derived.jacobian_seconds + by_jacobian[True].seconds, by_jacobian[False].seconds
-            ),
-            "ratio": (converged / seconds) / max(best.converged / best.seconds, 1e-300),
-        })
+    rows = [compared(search, newton, order) for order in COMPARED]
     return {"orders": rows, **totals(rows, prepared)}
+
+
+def compared(search: PolynomialSearch, newton: BatchNewton, order: int) -> dict[str, Any]:
+    """One order: frg on four full batches, the alternatives on the first starts of these."""
+    import alternative
+
+    active, scale = search.flow.active(order), np.asarray(search.args.scale)
+    starts = search._random(np.random.default_rng([3, order]), 4 * BATCH, active)
+    none = np.zeros((0, search.flow.size))
+    begun = time.perf_counter()
+    landing = newton.run(starts, active, search.args, none)
+    seconds = time.perf_counter() - begun
+    begun = time.perf_counter()
+    newton.run(starts[:STARTS_COMPARED], active, search.args, none)
+    same_seconds = time.perf_counter() - begun
+    careful, plain = alternative.derive(order), alternative.derive_plainly(order)
+    reached = alternative.in_loop_units((landing.unknowns * scale)[:, active])
+    given = alternative.in_loop_units((starts[:STARTS_COMPARED] * scale)[:, active])
+    exact = alternative.search(careful, given, exact_jacobian=True, referee=careful)
+    differenced = alternative.search(careful, given, exact_jacobian=False, referee=careful)
+    return {
+        "order": order,
+        "frg": side(len(starts), sum(careful.accepts(g) for g in reached), seconds),
+        "plain": side_of(alternative.search(plain, given, exact_jacobian=False, referee=careful)),
+        "careful": side_of(max(exact, differenced, key=lambda s: s.converged / s.seconds)),
+        "frg, the same starts": same_seconds,
+        "plain derivation": plain.seconds, "careful derivation": careful.seconds,
+        "careful Jacobian": careful.jacobian_seconds,
+        "careful derive and solve": careful.seconds + min(
+            careful.jacobian_seconds + exact.seconds, differenced.seconds
+        ),
+    }
+
+
+def side(starts: int, converged: int, seconds: float) -> dict[str, float]:
+    return {"starts": starts, "converged": converged, "seconds": seconds, "a second": converged / seconds}
+
+
+def side_of(searched: Any) -> dict[str, float]:
+    return side(searched.starts, searched.converged, searched.seconds)
 
 
 def totals(rows: list[dict[str, Any]], prepared: float) -> dict[str, float]:
     """Over all orders: roots a second, and seconds to derive, compile and run the same starts."""
+    def rate(who: str) -> float:
+        return sum(r[who]["converged"] for r in rows) / sum(r[who]["seconds"] for r in rows)
+
     def total(key: str) -> float:
         return float(sum(row[key] for row in rows))
 
-    mine = total("frg converged") / total("frg seconds")
-    theirs = total("alternative converged") / total("alternative seconds")
-    same = total("frg seconds for the same starts")
-    return {
-        "frg roots a second": mine, "alternative roots a second": theirs, "throughput ratio": mine / theirs,
-        "smallest ratio at one order": min(row["ratio"] for row in rows),
-        "frg preparation": prepared, "frg derive and solve": prepared + same,
-        "alternative derive and solve": total("alternative derive and solve"),
+    found = {f"roots a second, {who}": rate(who) for who in ("frg", "plain", "careful")}
+    for who in ("plain", "careful"):
+        found[f"throughput ratio, {who}"] = rate("frg") / rate(who)
+    return found | {
+        "frg: derive and compile": prepared,
+        "derive and solve, frg": prepared + total("frg, the same starts"),
+        "derive and solve, plain": total("plain derivation") + sum(r["plain"]["seconds"] for r in rows),
+        "derive and solve, careful": total("careful derive and solve"),
     }

@@ -1,5 +1,7 @@
 """Benchmarks: whole studies, start-up, evaluations, Newton starts, and the same work with sympy and scipy.
 
+"plain" and "careful" are the two versions of `alternative.py`; "frg" is one compiled program padded for all orders.
+
     python tests/benchmarks/run.py [--json PATH]
 
 prints a table and then the same numbers as one JSON object (with --json into a file instead). Nothing here
@@ -74,16 +76,14 @@ def _number(value: float) -> str:
 
 
 def order_table(rows: list[dict[str, Any]]) -> str:
-    """Side by side by order."""
-    lines = [f"{'order':>5}  {'frg: converged':>15} {'seconds':>9} {'a second':>9}   "
-             f"{'sympy+scipy: converged':>22} {'seconds':>9} {'a second':>9} {'derivation':>10} {'+Jacobian':>9} {'ratio':>7}"]
+    """Side by side by order: genuine roots reached of so many starts, and roots a second."""
+    names = ("frg", "plain", "careful")
+    lines = ["roots reached (a second)",
+             f"{'order':>5}" + "".join(f"{name:>24}" for name in names) + f"{'frg/plain':>12}{'frg/careful':>12}"]
     for r in rows:
-        mine, theirs = f"{r['frg converged']}/{r['frg starts']}", f"{r['alternative converged']}/{r['alternative starts']}"
-        lines.append(
-            f"{r['order']:>5}  {mine:>15} {r['frg seconds']:>9.3f} {r['frg converged'] / r['frg seconds']:>9.0f}   "
-            f"{theirs:>22} {r['alternative seconds']:>9.3f} {r['alternative converged'] / r['alternative seconds']:>9.1f} "
-            f"{r['alternative derivation']:>10.2f} {r['alternative Jacobian']:>9.2f} {r['ratio']:>7.1f}"
-        )
+        cells = [f"{r[n]['converged']}/{r[n]['starts']} ({r[n]['a second']:.4g})" for n in names]
+        ratios = [r["frg"]["a second"] / max(r[n]["a second"], 1e-300) for n in names[1:]]
+        lines.append(f"{r['order']:>5}" + "".join(f"{c:>24}" for c in cells) + "".join(f"{x:>12.1f}" for x in ratios))
     return "\n".join(lines)
 
 
