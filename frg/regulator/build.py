@@ -26,6 +26,12 @@ def build_regulator(choice: RegulatorChoice) -> AbstractRegulator:
     """The regulator a choice describes. Raises InputError for an unknown name or parameter or a bad value."""
     if choice.expression is not None:
         return _custom(choice)
+    if choice.name == "custom":
+        raise InputError(
+            "the regulator custom needs an expression",
+            remedy="write it after the name, for example custom:a*exp(-y)*(1+b*y),a=1,b=0.1",
+            place=Place(text=choice.name),
+        )
     shape = SHAPES.get(choice.name)
     if shape is None:
         known = [*SHAPES, "custom"]

@@ -10,16 +10,13 @@ import numpy as np
 
 from frg.errors import InputError, Place
 from frg.regulator.base import ACCURACY, AbstractRegulator, LoopRule
-from frg.regulator.quadrature import (
-    algebraic_rule,
-    compact_rule,
-    decaying_rule,
-    lowest_propagator,
-    shape_table,
-)
+from frg.regulator.quadrature import Loop, algebraic_rule, compact_rule, decaying_rule, exact_flat_rule
+from frg.regulator.tables import Table, least_propagator, power_of_decay, shape_table
 
 if TYPE_CHECKING:
     import sympy
+
+FAR = 60.0  # min P is looked for below it, in units of the width of the shape: P grows like y beyond
 
 
 def _require(regulator: AbstractRegulator, name: str, condition: bool, wanted: str) -> None:
@@ -39,7 +36,7 @@ class _Shape(AbstractRegulator):
     def parameters(self) -> dict[str, float]:
         return {f.name: float(getattr(self, f.name)) for f in fields(self)}
 
-    def _table(self, derivatives: int):  # type: ignore[no-untyped-def]
+    def _table(self, derivatives: int) -> Table:
         return shape_table(self.shape(), self.parameters, derivatives)
 
 
@@ -60,23 +57,36 @@ class Theta(_Shape):
     def shape(self) -> sympy.Expr:
         import sympy
 
-        y, alpha = sympy.symbols("y alpha")
-        return alpha * (1 - y) ** sympy.nsimplify(self.power)
+        y, alpha, power = sympy.symbols("y alpha power")
+        return alpha * (1 - y) ** (sympy.Integer(int(self.power)) if self.power == int(self.power) else power)
 
     def rule(
         self, dimension: float, *, derivatives: int = 2, decay: int = 1, accuracy: float = ACCURACY
     ) -> LoopRule:
+        """With d_t R, which vanishes like (1-y)^(power-1) at the edge, undifferentiated and `derivatives` derivatives of s
+        in all, integrands are integrable and free of surface terms where derivatives < 2*power. Without that
+        factor (after an integration by parts) they are where derivatives < power + 1."""
         _positive_dimension(dimension)
-        if self.power == 1.0:
+        p = self.power
+        if p == 1.0:
             return Flat(alpha=self.alpha).rule(dimension, derivatives=derivatives, decay=decay, accuracy=accuracy)
-        if derivatives > self.power:
+        if derivatives >= 2 * p:
             raise InputError(
-                f"theta with power {self.power:g} has no bounded derivative of order {derivatives} at its edge",
-                remedy=f"use a power of at least {derivatives}, or a smooth shape",
+                f"theta with power {p:g} is not smooth enough at its edge for {derivatives} derivatives",
+                remedy=f"use a power above {derivatives / 2:g}, or a smooth shape",
             )
-        table = self._table(derivatives)
-        count = 40 if accuracy < 1e-8 else 12
-        return compact_rule(table, dimension, count, None, lowest_propagator(table, 1 - 1e-12))
+        smooth = p == int(p)
+        guarded = derivatives >= p + 1
+        steepest = 2 * p - 1 - derivatives if guarded else p - derivatives
+        if smooth:  # the derivative of order `power` is constant, the next vanishes
+            steepest = max(steepest, 0.0)
+        dip = 1 - (self.alpha * p) ** (-1 / (p - 1)) if self.alpha * p > 1 else 0.0
+        loop = Loop(
+            table=self._table(max(derivatives, 2)), derivatives=derivatives, dimension=dimension,
+            dip=dip, lowest=dip + self.alpha * (1 - dip) ** p, decay=decay, accuracy=accuracy,
+            edge=min(0.0, steepest - (p - 1)), steepest=min(0.0, steepest), guarded=guarded,
+        )
+        return compact_rule(loop, smooth=smooth, roots=_roots(p))
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -106,9 +116,13 @@ class Flat(_Shape):
                 "the flat shape has a kink: derivatives beyond the second do not exist",
                 remedy="use a smooth shape, for example exponential",
             )
-        # two nodes are exact where P is constant (alpha = 1): the integrand is then at most cubic in y
-        count = 2 if self.alpha == 1.0 else (40 if accuracy < 1e-8 else 12)
-        return compact_rule(self._table(derivatives), dimension, count, -self.alpha, min(self.alpha, 1.0))
+        if self.alpha == 1.0:
+            return exact_flat_rule(self._table(derivatives), dimension)
+        loop = Loop(
+            table=self._table(2), derivatives=derivatives, dimension=dimension, lowest=min(self.alpha, 1.0), dip=0.0,
+            decay=decay, accuracy=accuracy,
+        )
+        return compact_rule(loop, smooth=True, kink=-self.alpha)
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -133,7 +147,8 @@ class Exponential(_Shape):
     def rule(
         self, dimension: float, *, derivatives: int = 2, decay: int = 1, accuracy: float = ACCURACY
     ) -> LoopRule:
-        return _decaying(self._table(derivatives), dimension, accuracy)
+        far = (FAR + 2 * math.log1p(self.alpha)) / self.s
+        return _decaying(self._table(max(derivatives, 2)), dimension, derivatives, decay, accuracy, far)
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -156,7 +171,8 @@ class Gaussian(_Shape):
     def rule(
         self, dimension: float, *, derivatives: int = 2, decay: int = 1, accuracy: float = ACCURACY
     ) -> LoopRule:
-        return _decaying(self._table(derivatives), dimension, accuracy)
+        far = FAR + 2 * math.log1p(self.alpha)
+        return _decaying(self._table(max(derivatives, 2)), dimension, derivatives, decay, accuracy, far)
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -176,14 +192,15 @@ class Power(_Shape):
         import sympy
 
         y, alpha, b = sympy.symbols("y alpha b")
-        return alpha * y ** (-b)
+        return alpha * y ** (-sympy.Integer(int(self.b)) if self.b == int(self.b) else -b)
 
     def rule(
         self, dimension: float, *, derivatives: int = 2, decay: int = 1, accuracy: float = ACCURACY
     ) -> LoopRule:
         # min over y of y + alpha y^-b, at y = (alpha b)^(1/(1+b))
         y = (self.alpha * self.b) ** (1 / (1 + self.b))
-        return _algebraic(self, self._table(derivatives), dimension, self.b, decay, accuracy, y + self.alpha * y ** (-self.b))
+        lowest = y + self.alpha * y ** (-self.b)
+        return _algebraic(self, dimension, self.b, derivatives, decay, accuracy, (y, lowest), _roots(self.b), self.b)
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -206,7 +223,7 @@ class Mass(_Shape):
     def rule(
         self, dimension: float, *, derivatives: int = 2, decay: int = 1, accuracy: float = ACCURACY
     ) -> LoopRule:
-        return _algebraic(self, self._table(derivatives), dimension, 0.0, decay, accuracy, self.alpha)
+        return _algebraic(self, dimension, 0.0, derivatives, decay, accuracy, (0.0, self.alpha), (1.0,))
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -229,15 +246,17 @@ class Sharp(_Shape):
         self, dimension: float, *, derivatives: int = 2, decay: int = 1, accuracy: float = ACCURACY
     ) -> LoopRule:
         raise InputError(
-            "the sharp cutoff has no loop integrand, only closed forms for momentum-independent vertices",
-            remedy="use it without wave-function renormalisation, or choose another regulator",
+            "the sharp cutoff has no loop integrand: its loops have closed forms, l_0 = -ln(1+w) and l_n = 1/(1+w)^n, "
+            "for vertices without momenta",
+            remedy="use it for potentials without wave-function renormalisation and for typed-in flows, or "
+            "choose another regulator",
         )
 
 
 @dataclass(frozen=True, kw_only=True)
 class Custom(_Shape):
-    """A shape of the user's: an expression in y and named parameters. Validated when it is made: finite where
-    loops need it, positive, and falling faster than any power."""
+    """A shape of the user's: an expression in y and named parameters. Validated when it is made: y s(y) finite at
+    the origin, s finite and positive on a dense set of y, falling to zero."""
 
     name: ClassVar[str] = "custom"
     reference: ClassVar[str] = "user"
@@ -250,17 +269,22 @@ class Custom(_Shape):
         text = expression_text(self.expression)
         for name, _ in self.values:
             _require(self, name, True, "finite")
-        y = np.concatenate([np.geomspace(1e-8, 0.05, 30), np.linspace(0.06, 12, 120)])
+        y = np.concatenate([np.geomspace(1e-8, 0.05, 30), np.linspace(0.06, 12, 240), np.geomspace(12.5, 300, 60)])
         try:
-            s = shape_table(self.shape(), self.parameters, 1)(y)
+            table = shape_table(self.shape(), self.parameters, 1)
+            s = table(y)
+            b = power_of_decay(table)
         except (ZeroDivisionError, ValueError, OverflowError, TypeError) as error:
             raise _unfit(text, f"it cannot be evaluated for all y > 0 ({error})") from None
         if not np.isfinite(s).all():
             raise _unfit(text, "it is not finite for all y > 0")
-        if not (s[0] > 0).all():
-            raise _unfit(text, f"it is not positive at y = {y[np.argmin(s[0])]:.4g}")
-        if not s[0][0] * y[0] < 1e-3:
-            raise _unfit(text, "y s(y) does not vanish for y to 0")
+        for part in (y <= 12, y > 12):
+            if not (s[0][part] > 0).all() and not _underflows(s[0]):
+                raise _unfit(text, f"it is not positive at y = {y[part][np.argmin(s[0][part])]:.4g}")
+        if s[0][0] * y[0] > 1.5 * max(s[0][1] * y[1], 1e-6):
+            raise _unfit(text, "y s(y) grows without bound for y to 0")
+        if b is not None and not b > 0:
+            raise _unfit(text, "for large y it does not fall like a power of y or faster")
 
     @property
     def parameters(self) -> dict[str, float]:
@@ -272,7 +296,19 @@ class Custom(_Shape):
     def rule(
         self, dimension: float, *, derivatives: int = 2, decay: int = 1, accuracy: float = ACCURACY
     ) -> LoopRule:
-        return _decaying(self._table(derivatives), dimension, accuracy)
+        table = self._table(max(derivatives, 2))
+        b = power_of_decay(table)
+        if b is None:
+            return _decaying(table, dimension, derivatives, decay, accuracy, 1e3, (1.0, 0.5))
+        least = least_propagator(table, 1e3)
+        return _algebraic(self, dimension, b, derivatives, decay, accuracy, least, _roots(b))
+
+
+def _underflows(s: np.ndarray) -> bool:
+    """True where s falls below the smallest double and stays there."""
+    zero = s == 0
+    first = int(np.argmax(zero))
+    return bool(0 < first and (s[:first] > 0).all() and zero[first:].all() and s[first - 1] < 1e-100)
 
 
 def _unfit(text: str, why: str) -> InputError:
@@ -283,36 +319,48 @@ def _unfit(text: str, why: str) -> InputError:
     )
 
 
-def _decaying(table, dimension: float, accuracy: float) -> LoopRule:  # type: ignore[no-untyped-def]
-    _positive_dimension(dimension)
-    lowest = lowest_propagator(table, 12.0)
-    for nodes in PANEL_NODES[:-1]:
-        try:
-            rule = decaying_rule(table, dimension, nodes, lowest)
-        except InputError:
-            continue  # too coarse to tell anything; only the finest rule decides that a loop does not converge
-        if rule.error < accuracy:
-            return rule
-    return decaying_rule(table, dimension, PANEL_NODES[-1], lowest)
+def _roots(power: float) -> tuple[float, ...]:
+    """Exponents q of variables y^q in which y and y^power are analytic, or at least smoother."""
+    for m in (1, 2, 3, 4):
+        if abs(m * power - round(m * power)) < 1e-12:
+            return (1.0,) if m == 1 else (1 / m,)
+    return (0.5, 1 / 3, 0.25)
 
 
-PANEL_NODES = (5, 8, 14, 20, 28, 40)  # a panel; the least that suffices is taken
-
-
-def _algebraic(  # type: ignore[no-untyped-def]
-    regulator: _Shape, table, dimension: float, b: float, decay: int, accuracy: float, lowest: float
+def _decaying(
+    table: Table, dimension: float, derivatives: int, decay: int, accuracy: float, far: float,
+    roots: tuple[float, ...] = (1.0,),
 ) -> LoopRule:
+    _positive_dimension(dimension)
+    dip, lowest = least_propagator(table, far)
+    loop = Loop(
+        table=table, derivatives=derivatives, dimension=dimension, lowest=lowest, dip=dip, decay=decay, accuracy=accuracy
+    )
+    return decaying_rule(loop, roots=roots)
+
+
+def _algebraic(
+    regulator: _Shape, dimension: float, b: float, derivatives: int, decay: int, accuracy: float,
+    least: tuple[float, float], roots: tuple[float, ...], rise: float = 0.0,
+) -> LoopRule:
+    """Where the integrand d_t R / (P+w)^decay, which falls like y^(-b-decay), is not integrable for decay = 1, the part
+    that does not depend on the fields is subtracted: what is left falls by one more power."""
     _positive_dimension(dimension)
     fall, subtract = b + decay, False
     if fall <= dimension / 2 and decay == 1:
-        # the part that does not depend on the fields diverges; what is left falls by one more power
         fall, subtract = b + 2, True
     if fall <= dimension / 2:
         raise InputError(
-            f"the loop diverges with the regulator {regulator.name} in d = {dimension:g}",
+            f"the loop diverges with the regulator {regulator.name} in d = {dimension:g}: its integrand falls like "
+            f"y^(-{fall - dimension / 2 + 1:g})",
             remedy="lower the dimension, or choose a regulator that decays faster",
         )
-    return algebraic_rule(table, dimension, fall, 48 if accuracy < 1e-8 else 12, subtract, lowest, decay)
+    dip, lowest = least
+    loop = Loop(
+        table=regulator._table(max(derivatives, 2)), derivatives=derivatives, dimension=dimension, lowest=lowest, dip=dip,
+        decay=2 if subtract else decay, accuracy=accuracy,
+    )
+    return algebraic_rule(loop, fall=fall, subtract=subtract, roots=roots, rise=rise)
 
 
 def _positive_dimension(dimension: float) -> None:
