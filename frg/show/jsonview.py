@@ -3,11 +3,14 @@
 from __future__ import annotations
 
 import math
+import re
 from collections.abc import Iterable
 from fractions import Fraction
 from typing import Any
 
 from frg.records import FixedPoint, Growth, Run, Step, Track, Verdict
+
+PLAIN_NUMBER = re.compile(r"[+-]?(?:\d{1,15}/\d{1,15}|\d{1,40}(?:\.\d{0,40})?(?:[eE][+-]?\d{1,3})?|\.\d{1,40})", re.ASCII)
 
 
 def run_to_json(run: Run, path: str | None, *, command: str) -> dict[str, Any]:
@@ -31,10 +34,10 @@ def run_to_json(run: Run, path: str | None, *, command: str) -> dict[str, Any]:
 def step_to_json(step: Step) -> dict[str, Any]:
     """One step with all its fixed points."""
     return {
-        "order": dict(step.order),
+        "order": {k: int(v) for k, v in step.order.items()},
         "outcome": step.outcome.word,
         "fixed_points": [point_to_json(p) for p in step.fixed_points],
-        "search": dict(step.search),
+        "search": {k: int(v) for k, v in step.search.items()},
         "seconds": _real(step.seconds),
         "notes": list(step.notes),
     }
@@ -51,9 +54,9 @@ def point_to_json(point: FixedPoint) -> dict[str, Any]:
         "residual": _real(point.residual),
         "theta": _complexes(point.theta),
         "theta_odd": _complexes(point.theta_odd),
-        "relevant": point.relevant,
-        "marginal": point.marginal,
-        "certified": point.certified,
+        "relevant": int(point.relevant),
+        "marginal": int(point.marginal),
+        "certified": None if point.certified is None else bool(point.certified),
         "condition": _real(point.condition),
         "landmarks": _reals(point.landmarks),
         "notes": list(point.notes),
@@ -75,9 +78,9 @@ def _track(track: Track) -> dict[str, Any]:
 
 def _verdict(verdict: Verdict) -> dict[str, Any]:
     return {
-        "counts": list(verdict.counts),
-        "settled_from": verdict.settled_from,
-        "relevant": verdict.relevant,
+        "counts": [int(c) for c in verdict.counts],
+        "settled_from": _count(verdict.settled_from),
+        "relevant": _count(verdict.relevant),
         "finite": verdict.finite,
         "reasons": list(verdict.reasons),
         "exponents": [
@@ -93,6 +96,10 @@ def _growth(growth: Growth) -> dict[str, Any]:
         "entering": [_real(x) for x in growth.entering],
         "slope": _real(growth.slope), "offset": _real(growth.offset), "scatter": _real(growth.scatter),
     }
+
+
+def _count(value: int | None) -> int | None:
+    return None if value is None else int(value)
 
 
 def _real(value: float) -> float | None:
@@ -116,9 +123,14 @@ def _complexes(values: Iterable[complex]) -> list[list[float] | None]:
 
 
 def _number(text: str) -> float | int | str:
-    """A parameter's value as a number where its text is a plain one: "3" -> 3, "5/2" -> 2.5."""
+    """A parameter's value as a number where its text is a plain one: "3" -> 3, "5/2" -> 2.5.
+
+    Texts whose number is no double (1e999, or worse 1e999999999, whose digits would fill the memory) stay texts."""
+    if not PLAIN_NUMBER.fullmatch(text):
+        return text
     try:
         value = Fraction(text)
-    except (ValueError, ZeroDivisionError):
+        number = float(value)
+    except (ValueError, ZeroDivisionError, OverflowError):
         return text
-    return int(value) if value.denominator == 1 else float(value)
+    return int(value) if value.denominator == 1 and abs(number) < 2.0**53 else number

@@ -7,7 +7,7 @@ import io
 
 from frg.records import Run
 from frg.show.numbers import correlation_exponent, value_with_error
-from frg.show.tables import study_rows
+from frg.show.tables import leading, study_rows
 
 SPECIAL = {
     "\\": r"\textbackslash{}", "&": r"\&", "%": r"\%", "$": r"\$", "#": r"\#", "_": r"\_", "{": r"\{", "}": r"\}",
@@ -32,14 +32,16 @@ def study_table(run: Run) -> str:
         first = verdict.exponents[0]
         nu_value = correlation_exponent(complex(first.value))
         nu_text = value_with_error(nu_value, first.error * nu_value**2) if nu_value is not None else "-"
-        theta_text = ", ".join(value_with_error(e.value.real, e.error) for e in verdict.exponents[:3])
-        lines.append(f"$\\infty$ & {escape(str(verdict.relevant))} & {escape(nu_text)} & {escape(theta_text)} \\\\")
+        theta_text = ", ".join(value_with_error(e.value, e.error) for e in leading(verdict.exponents, 3))
+        count = "--" if verdict.relevant is None else str(verdict.relevant)
+        lines.append(f"$\\infty$ & {count} & {escape(nu_text)} & {escape(theta_text)} \\\\")
         lines.append(r"\hline")
     return "\n".join([*lines, r"\end{tabular}"])
 
 
 def study_csv(run: Run) -> str:
-    """Every fixed point of every step: order, label, kind, relevant, residual, condition, couplings, exponents."""
+    """Every fixed point of every step, one line a number: couplings, exponents (those of odd perturbations apart), eta,
+    landmarks."""
     buffer = io.StringIO()
     writer = csv.writer(buffer, lineterminator="\n")
     writer.writerow(["order", "label", "kind", "relevant", "marginal", "residual", "condition", "quantity", "name",
@@ -47,11 +49,14 @@ def study_csv(run: Run) -> str:
     for step in run.steps:
         order = " ".join(f"{k}={v}" for k, v in step.order.items())
         for p in step.fixed_points:
-            head = [order, p.label, p.kind, p.relevant, p.marginal, repr(p.residual), repr(p.condition)]
+            head = [order, p.label, p.kind, p.relevant, p.marginal, repr(float(p.residual)), repr(float(p.condition))]
             for name, value in zip(p.names, p.couplings, strict=True):
                 writer.writerow([*head, "coupling", name, repr(float(value)), ""])
             for i, theta in enumerate(p.theta):
                 writer.writerow([*head, "theta", f"theta_{i + 1}", repr(float(theta.real)), repr(float(theta.imag))])
-            for name, value in p.eta.items():
-                writer.writerow([*head, "eta", name, repr(float(value)), ""])
+            for i, theta in enumerate(p.theta_odd):
+                writer.writerow([*head, "theta odd", f"theta_{i + 1}", repr(float(theta.real)), repr(float(theta.imag))])
+            for quantity, values in (("eta", p.eta), ("landmark", p.landmarks)):
+                for name, value in values.items():
+                    writer.writerow([*head, quantity, name, repr(float(value)), ""])
     return buffer.getvalue().rstrip("\n")

@@ -7,24 +7,25 @@ from typing import Any
 
 from frg.errors import FrgError
 from frg.records import FixedPoint, Run, Step, Verdict
-from frg.show.tables import point_lines, study_rows, verdict_lines
-
-COLUMNS = ("order", "roots", "relevant", "nu", "theta", "residual", "next root")
+from frg.show.tables import COLUMNS, header_lines, point_lines, step_lines, study_rows, verdict_lines
 
 
 def html_for(record: Run | Step | FixedPoint | Verdict) -> str:
     """The record as escaped HTML: a table for a run, words for the rest."""
     if isinstance(record, Run):
+        about = _paragraph(header_lines(record))
+        if len(record.steps) == 1 and record.verdict is None:
+            return about + html_for(record.steps[0])
         head = "".join(f"<th>{html.escape(c)}</th>" for c in COLUMNS)
         body = "".join(
             "<tr>" + "".join(f"<td>{html.escape(x)}</td>" for x in row) + "</tr>" for row in study_rows(record)
         )
         words = _paragraph(verdict_lines(record.verdict)) if record.verdict is not None else ""
-        return f"<b>{html.escape(record.inputs.title)}</b><table><tr>{head}</tr>{body}</table>{words}"
+        return f"{about}<table><tr>{head}</tr>{body}</table>{words}"
     if isinstance(record, Verdict):
         return _paragraph(verdict_lines(record))
     if isinstance(record, Step):
-        return "".join(_paragraph(point_lines(p)) for p in record.fixed_points) or html.escape(record.outcome.value)
+        return _paragraph(step_lines(record, title="step"))
     return _paragraph(point_lines(record))
 
 
