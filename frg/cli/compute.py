@@ -17,7 +17,8 @@ from frg.cli.progress import progress
 from frg.cli.settings import study_settings
 from frg.errors import InputError, Outcome, Place, StoreError
 from frg.records import Run, Step
-from frg.solve.search import Warm, make_search, run_step
+from frg.solve.choose import make_search
+from frg.solve.search import Warm, run_step
 from frg.store.base import AbstractStore
 from frg.study.convergence import ConvergenceStudy, StudySettings, convergence_study
 

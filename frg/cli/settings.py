@@ -20,7 +20,7 @@ def search_settings(*, thorough: bool, single: bool = False) -> SearchSettings:
         starts=128 if thorough or single else 32,
         rounds=8 if thorough else (3 if single else 2),
         later_rounds=4 if thorough else 1,
-        seed=20240917,
+        stream=20240917,
         duplicate=1e-6,
         polish=4,
         newton=Newton(iterations=60 if thorough else 40, halvings=4, step=1e-10),

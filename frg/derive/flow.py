@@ -52,7 +52,8 @@ def _flat_flow(truncation: Truncation, book: LoopBook) -> FlowEquations:
     kinetic, rest = split_kinetic(truncation)
     waves = wave_function_of(truncation, kinetic)
     potential = read_potential(truncation, rest)
-    anomalous = tuple(anomalous_dimension(potential, wave, book) for wave in waves.values())
+    single = all(truncation.numeric(f.components) == 1 for f in truncation.fields)
+    anomalous = tuple(anomalous_dimension(potential, wave, book, single) for wave in waves.values())
     etas = {a.field: sympy.Symbol(a.symbol) for a in anomalous}
     eta = next(iter(etas.values()), sympy.Integer(0))
     blocks = mode_blocks(potential)

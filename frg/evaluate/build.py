@@ -217,13 +217,16 @@ def loop_rule(equations: FlowEquations, accuracy: float = ACCURACY) -> LoopRule 
     if not equations.loops:
         return None
     decay = min(loop.decay for loop in equations.loops)
-    return _rule(equations.regulator, dimension_value(equations), decay, accuracy)
+    derivatives = 2 if any(loop.surface for loop in equations.loops) else 1
+    return _rule(equations.regulator, dimension_value(equations), derivatives, decay, accuracy)
 
 
 @lru_cache(maxsize=32)
-def _rule(regulator: AbstractRegulator, dimension: float, decay: int, accuracy: float) -> LoopRule:
+def _rule(
+    regulator: AbstractRegulator, dimension: float, derivatives: int, decay: int, accuracy: float
+) -> LoopRule:
     """Regulators are frozen values, so that their rules can be kept: a search asks for them again and again."""
-    return regulator.rule(dimension, derivatives=2, decay=decay, accuracy=accuracy)
+    return regulator.rule(dimension, derivatives=derivatives, decay=decay, accuracy=accuracy)
 
 
 def dimension_value(equations: FlowEquations) -> float:

@@ -83,7 +83,7 @@ class Taylor(AbstractDiscretisation):
             math.prod(math.factorial(i) for i in self.algebra.exponents[k])
             if self.functions[f].derivative else 1.0
             for f, k in self.layout
-        ])
+        ], dtype=float)
 
     def unit(self, coordinate: float, value: float) -> np.ndarray:
         degrees = np.array([self.algebra.degrees[k] for _, k in self.layout], dtype=float)

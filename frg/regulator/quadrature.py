@@ -1,7 +1,7 @@
 """Quadrature rules for loops: as few nodes as give the accuracy wanted, with a measured error.
 
 Every loop integrand is d_t R times powers of propagators times smooth factors. So the measure
-y^(d/2-1) (s - y s') / P^decay dy is kept exact and the rest is taken for a polynomial in a variable z of
+y^(d/2-1) (s - y s') P^-1 (1 + y/min P)^(1-decay) dy is kept exact and the rest is taken for a polynomial in a variable z of
 the form x^q/(x^q + c^q), x the distance from an end of the panel: Gauss quadrature for that measure (G. Golub, J. Welsch,
 Math. Comp. 23 (1969) 221), its recurrence computed by the Lanczos procedure from a fine discretisation of the measure
 (W. Gautschi, Acta Numerica 5 (1996) 45). c, q and the number of nodes are tried out on test
@@ -67,7 +67,9 @@ class Loop:
         insertion = s[0] - y * s[1]
         if (insertion < 0).any():
             insertion = s[0] * (1 + y)  # s rises somewhere; any positive measure of the same decay will do
-        return insertion * (1 / (y + s[0])) ** self.decay * ((1 - y) ** self.edge if self.edge else 1.0)
+        # towards the origin a single propagator, whatever `decay`: of a power law, P^-decay and y s' vanish there
+        propagators = (1 / (y + s[0])) * (1 + y / self.lowest) ** (1 - self.decay)
+        return insertion * propagators * ((1 - y) ** self.edge if self.edge else 1.0)
 
     def tests(self, points: Points) -> np.ndarray:
         """Test integrands at the points, (number, m): d_t R / (P+w)^k, its eta part, derivatives of s."""

@@ -269,7 +269,8 @@ class Custom(_Shape):
         text = expression_text(self.expression)
         for name, _ in self.values:
             _require(self, name, True, "finite")
-        y = np.concatenate([np.geomspace(1e-8, 0.05, 30), np.linspace(0.06, 12, 240), np.geomspace(12.5, 300, 60)])
+        # round numbers are among the points: poles that people write down lie there
+        y = np.concatenate([np.geomspace(1e-8, 0.05, 30), np.arange(3, 601) / 50, np.geomspace(12.5, 300, 60)])
         try:
             table = shape_table(self.shape(), self.parameters, 1)
             s = table(y)

@@ -3,11 +3,12 @@
 from __future__ import annotations
 
 import math
+from functools import lru_cache
 
 import numpy as np
 
 from frg.errors import InputError, Place
-from frg.regulator.base import AbstractRegulator
+from frg.regulator.base import AbstractRegulator, LoopRule
 
 
 def threshold(regulator: AbstractRegulator, n: int, w: float, dimension: float, eta: float = 0.0) -> float:
@@ -24,7 +25,7 @@ def threshold(regulator: AbstractRegulator, n: int, w: float, dimension: float, 
             raise InputError("the sharp cutoff has no threshold functions with eta", remedy="use eta = 0")
         _above_pole(w, 1.0)
         return -math.log1p(w) if n == 0 else (1 + w) ** (-n)
-    rule = regulator.rule(dimension, derivatives=1, decay=n + 1)
+    rule = _rule(regulator, dimension, n + 1)
     _above_pole(w, rule.lowest)
     insertion = (2 - eta) * rule.s[0] - 2 * rule.y * rule.s[1]
     P = rule.y + rule.s[0]
@@ -33,6 +34,12 @@ def threshold(regulator: AbstractRegulator, n: int, w: float, dimension: float, 
     else:
         values = insertion / (P + w) ** (n + 1)
     return float(max(n, 1) / 2 * np.sum(rule.weight * values))
+
+
+@lru_cache(maxsize=32)
+def _rule(regulator: AbstractRegulator, dimension: float, decay: int) -> LoopRule:
+    """Regulators are frozen values, so that their rules can be kept."""
+    return regulator.rule(dimension, derivatives=1, decay=decay)
 
 
 def _above_pole(w: float, lowest: float) -> None:

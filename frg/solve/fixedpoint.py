@@ -281,13 +281,20 @@ def _outside_domain(examiner: Examiner, measured: Measured, args: Arguments, uni
             return "the expansion point is a maximum of the potential"
     if not flow.equations.positivity:
         return None
+    if not isinstance(block, FieldPolynomial) and not flow.equations.functions:
+        masses = examiner.masses(g, np.zeros(1), args)
+        return _not_positive(masses, examiner.lowest)
     if isinstance(block, FieldPolynomial) or len(flow.equations.functions[0].coordinates) > 1:
         masses = np.asarray(masses_at_centre(flow, g, args))
     else:
         masses = examiner.masses(g, domain_points(flow, g, args, unit), args)
-    if not np.isfinite(masses).all() or np.min(masses) < -examiner.lowest * (1 + AT_BOUNDARY):
-        return (
-            f"a regulated propagator is not positive: the smallest mass is {np.min(masses):.6g}, "
-            f"the bound is {-examiner.lowest:.6g}"
-        )
-    return None
+    return _not_positive(masses, examiner.lowest)
+
+
+def _not_positive(masses: np.ndarray, lowest: float) -> str | None:
+    if np.isfinite(masses).all() and np.min(masses) >= -lowest * (1 + AT_BOUNDARY):
+        return None
+    return (
+        f"a regulated propagator is not positive: the smallest mass is {np.min(masses):.6g}, "
+        f"the bound is {-lowest:.6g}"
+    )

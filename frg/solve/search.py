@@ -35,7 +35,7 @@ class SearchSettings:
     starts: int
     rounds: int
     later_rounds: int
-    seed: int
+    stream: int
     duplicate: float
     polish: int
     newton: Newton
@@ -60,17 +60,6 @@ class AbstractSearch(abc.ABC):
     @abc.abstractmethod
     def find(self, order: int | None, warm: Warm) -> tuple[list[FixedPoint], dict[str, int], tuple[str, ...]]:
         """(records sorted by `ranking`, counts of what was tried, notes)."""
-
-
-def make_search(
-    equations: FlowEquations, orders: tuple[int, ...], settings: SearchSettings
-) -> AbstractSearch:
-    """The search that fits the discretisation the truncation asks for."""
-    from frg.solve.gridsearch import GridSearch
-
-    if equations.functions and any(f.declared.grid for f in equations.functions):
-        return GridSearch(equations=equations, settings=settings)
-    return PolynomialSearch(equations=equations, orders=orders, settings=settings)
 
 
 def run_step(search: AbstractSearch, name: str, order: int | None, warm: Warm) -> Step:
@@ -153,9 +142,10 @@ class PolynomialSearch(AbstractSearch):
         last = int(active.sum())
         roots = self._ladder.roots(last, self.args, region)
         kept = roots[self._ladder.genuine(roots[:, 0], last, self.args)] if len(roots) else roots
+        noise = len(roots) - len(kept)
         if self._vanishes(active):
             kept = np.concatenate([np.zeros((1, self.flow.size)), kept])
-        counts = {"ladder points": scan.points, "brackets": len(roots), "rounding noise": len(roots) - len(kept)}
+        counts = {"ladder points": scan.points, "brackets": len(roots), "rounding noise": noise}
         notes = (
             f"ladder: all real roots with {region.low * unit:.4g} < first coupling < {scan.high:.4g} "
             "that the scan resolves",
@@ -170,7 +160,7 @@ class PolynomialSearch(AbstractSearch):
         settings = self.settings
         args = self._fitted(warm)
         scale = np.asarray(args.scale)
-        rng = np.random.default_rng([settings.seed, order or 0])
+        rng = np.random.default_rng([settings.stream, order or 0])
         starts = [np.where(active, self._unknowns(point) / scale, 0.0) for point in warm.points]
         warm_starts = np.array(starts).reshape(-1, self.flow.size)
         counts = {"starts": 0, "converged": 0}

@@ -29,7 +29,8 @@ def wynn_epsilon(sequence: np.ndarray) -> list[complex]:
 
 
 def extrapolate(values: np.ndarray) -> Extrapolation:
-    """Limit of a sequence (NaN entries at its start are ignored).
+    """Limit of a sequence (NaN entries at its start are ignored). Fewer than four terms say nothing of their limit:
+    the last one is returned, with an infinite error.
 
     Accelerated estimates are formed from the sequence and from the sequence without its last one and two terms;
     the column of the epsilon table whose three estimates scatter least is taken. The error is the
@@ -42,8 +43,7 @@ def extrapolate(values: np.ndarray) -> Extrapolation:
         return Extrapolation(value=complex(np.nan), error=float("inf"), last=complex(np.nan))
     last = complex(terms[-1])
     if len(terms) < 4:
-        error = float(np.max(np.abs(np.diff(terms)))) if len(terms) > 1 else float("inf")
-        return Extrapolation(value=last, error=error, last=last)
+        return Extrapolation(value=last, error=float("inf"), last=last)
     terms = terms[-WINDOW:]
     tables = [wynn_epsilon(terms[: len(terms) - cut]) for cut in range(3)]
     depth = min(len(t) for t in tables)

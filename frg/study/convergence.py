@@ -10,7 +10,8 @@ import numpy as np
 from frg.derive.equations import FlowEquations
 from frg.errors import InputError, Place
 from frg.records import Step, Track, Verdict
-from frg.solve.search import AbstractSearch, PolynomialSearch, SearchSettings, Warm, make_search, run_step
+from frg.solve.choose import make_search
+from frg.solve.search import AbstractSearch, PolynomialSearch, SearchSettings, Warm, run_step
 from frg.study.canonical import canonical_exponents
 from frg.study.tracking import TrackingSettings, track_points
 from frg.study.verdict import VerdictSettings, judge

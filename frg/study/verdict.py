@@ -128,6 +128,9 @@ def _weigh(
     elif growth.slope >= settings.sinking and growth.entering[-1] < 0:
         favour.append(f"entering exponents sink with {growth.slope:.2f} times the canonical slope "
                       f"(offset {growth.offset:.2f}, scatter {growth.scatter:.2f})")
+    elif growth.slope >= settings.sinking:
+        missing.append(f"entering exponents sink with {growth.slope:.2f} times the canonical slope, but none that has "
+                       "settled is irrelevant yet: go to higher orders")
     else:
         missing.append(f"entering exponents do not sink along with the canonical ones (slope {growth.slope:.2f})")
     return against, missing, favour

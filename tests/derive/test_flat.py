@@ -34,7 +34,7 @@ def test_flat_local_potential_is_the_published_equation() -> None:
 def test_goldstone_anomalous_dimension_of_the_flat_shape_is_the_published_one() -> None:
     # J. Berges, N. Tetradis, C. Wetterich, Phys. Rept. 363 (2002) 223, with m_{2,2} = 1/(1 + 2 kappa lambda)^2 for
     # the flat shape: eta = 16 v_d/d kappa lambda^2/(1 + 2 kappa lambda)^2 (formula from memory)
-    (eta,) = derive_flow(scalar(components="N", wave=True), Flat()).anomalous
+    (eta,) = derive_flow(scalar(components="N", wave=True, overrides={"N": "2"}), Flat()).anomalous
     d, rho = sympy.symbols("d rho")
     at_minimum = eta.rhs.subs(u(1), 0)
     assert eta.mode == "goldstone"
@@ -87,7 +87,7 @@ def test_bubble_slope_is_the_momentum_derivative_of_the_bubble() -> None:
     a, b, regulator = 0.4, 0.1, Gaussian(alpha=1.3)
     book = LoopBook(regulator, sympy.Integer(3), close=False, dimension_value=3.0)
     bubble_slope(book, sympy.Float(a), sympy.Float(b), sympy.Integer(0))
-    flow = build_flow(derive_flow(scalar(about="0"), regulator), (2,))
+    flow = build_flow(derive_flow(scalar(wave=True), regulator), (2,))
     rule = flow_arguments(flow).rule
     ours = float(integrate(compile_expressions([book.loops[0].integrand]), {}, rule, surface=True, subtract=False))
 
@@ -121,6 +121,10 @@ def test_one_component_of_the_multiplet_is_the_single_scalar() -> None:
 
 def test_radial_mode_is_used_for_one_component_and_can_be_asked_for() -> None:
     assert derive_flow(scalar(wave=True), Flat()).anomalous[0].mode == "radial"
+    # the number of components in force decides, not how it was written
+    assert derive_flow(scalar(components="N", wave=True), Flat()).anomalous[0].mode == "radial"
+    two = scalar(components="N", wave=True, overrides={"N": "2"})
+    assert derive_flow(two, Flat()).anomalous[0].mode == "goldstone"
 
 
 def test_odd_sector_has_its_exact_constant_and_redundant_directions() -> None:

@@ -13,7 +13,8 @@ import pytest
 from frg.cli.problem import read_problem
 from frg.cli.settings import search_settings
 from frg.records import FixedPoint, Step
-from frg.solve.search import Warm, make_search, run_step
+from frg.solve.choose import make_search
+from frg.solve.search import Warm, run_step
 
 
 def solve(file, *, order: int | None = None, overrides: tuple[str, ...] = (), regulator: str | None = None) -> Step:

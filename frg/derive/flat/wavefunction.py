@@ -39,9 +39,10 @@ def bubble_slope(
 
 
 def anomalous_dimension(
-    potential: Potential, wave: WaveFunction, book: LoopBook
+    potential: Potential, wave: WaveFunction, book: LoopBook, single: bool
 ) -> AnomalousDimension:
-    """eta = -d_t ln Z read from the Goldstone or the radial mode of the single multiplet."""
+    """eta = -d_t ln Z read from the Goldstone or the radial mode of the only multiplet; `single` says that it has one
+    component in force, so that there is no Goldstone mode."""
     import sympy
 
     if len(potential.coordinates) != 1 or potential.function is None:
@@ -52,7 +53,7 @@ def anomalous_dimension(
     components = potential.coordinates[0].field.components
     mode = wave.mode
     if mode == "auto":
-        mode = "radial" if components == 1 else "goldstone"
+        mode = "radial" if single else "goldstone"
     eta = symbols.anomalous(wave.name)
     phi = radial_field(0)
     radial = to_coordinates(potential, derivative_by_fields(potential, (0, 0)))
