@@ -213,7 +213,7 @@ def compose(a: Series, taylor: Any) -> Series:
 def exponential(a: Series) -> Series:
     jnp = load().numpy
     value = jnp.exp(a.coefficients[0])
-    return compose(a, [value / math.factorial(k) for k in range(a.algebra.degree + 1)])
+    return compose(a, [value * (1.0 / math.factorial(k)) for k in range(a.algebra.degree + 1)])
 
 
 def root(a: Series) -> Series:
@@ -238,7 +238,7 @@ def _trigonometric(a: Series, shift: int) -> Series:
     jnp = load().numpy
     x = a.coefficients[0]
     cycle = [jnp.sin(x), jnp.cos(x), -jnp.sin(x), -jnp.cos(x)]
-    return compose(a, [cycle[(k + shift) % 4] / math.factorial(k) for k in range(a.algebra.degree + 1)])
+    return compose(a, [cycle[(k + shift) % 4] * (1.0 / math.factorial(k)) for k in range(a.algebra.degree + 1)])
 
 
 def tangent(a: Series) -> Series:
