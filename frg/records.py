@@ -172,3 +172,8 @@ class Run:
     steps: tuple[Step, ...] = ()
     tracks: tuple[Track, ...] = ()
     verdict: Verdict | None = None
+
+
+def counted(number: int, noun: str) -> str:
+    """'1 relevant direction', '3 relevant directions'."""
+    return f"{number} {noun}{'' if number == 1 else 's'}"

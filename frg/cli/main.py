@@ -6,7 +6,7 @@ import sys
 from collections.abc import Sequence
 
 from frg.cli.options import build_parser
-from frg.errors import FrgError
+from frg.errors import FrgError, InputError, Place
 
 DONE, FAILED, BAD_INPUT, INTERRUPTED = 0, 1, 2, 130
 
@@ -23,6 +23,8 @@ def main(arguments: Sequence[str] | None = None) -> int:
     try:
         return int(_run(options, given))
     except FrgError as error:
+        if isinstance(error, InputError) and error.place.source is None:
+            error = error.at(Place(source=getattr(options, "file", None)))
         print(f"frg: {error}", file=sys.stderr)
         return error.exit_code
     except KeyboardInterrupt:

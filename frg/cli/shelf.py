@@ -8,7 +8,7 @@ from typing import Any
 
 from frg import __version__
 from frg.errors import InputError, StoreError
-from frg.records import Run
+from frg.records import Run, counted
 
 DONE, FAILED = 0, 1
 
@@ -21,6 +21,7 @@ def run(options: Any) -> int:
 
 
 def _runs(options: Any) -> int:
+    from frg.show.numbers import harmless
     from frg.store.naming import list_runs
 
     found = list_runs(options.folder)
@@ -36,7 +37,7 @@ def _runs(options: Any) -> int:
         print(f"no runs in {options.folder}/")
         return DONE
     for s in found:
-        detail = s.problem if s.problem else f"{s.step_count} step(s)  {s.title}"
+        detail = s.problem if s.problem else f"{counted(s.step_count, 'step')}  {harmless(s.title)}"
         print(f"{s.path.name}\n    {s.status:<12}{s.created_utc:<22}{detail}")
     return DONE
 
@@ -68,7 +69,7 @@ def _show(options: Any) -> int:
     if options.step is not None:
         if not 0 <= options.step < len(stored.steps):
             raise InputError(
-                f"--step {options.step}: the run has {len(stored.steps)} step(s)",
+                f"--step {options.step}: the run has {counted(len(stored.steps), 'step')}",
                 remedy=f"choose a step from 0 to {len(stored.steps) - 1}",
             )
         tables.print_step(console, stored.steps[options.step], title=stored.inputs.title)

@@ -97,3 +97,8 @@ def correlation_exponent(theta: complex) -> float | None:
     if not is_finite(theta) or abs(theta.imag) > REAL * max(1.0, abs(theta)) or not theta.real > 1e-9:
         return None
     return 1 / theta.real
+
+
+def harmless(text: str) -> str:
+    """The text with control characters spelled out: titles and notes of a foreign run file must not steer a terminal."""
+    return "".join(c if c.isprintable() else c.encode("unicode_escape").decode("ascii") for c in text)

@@ -8,8 +8,15 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from frg.records import Extrapolation, FixedPoint, Run, Step, Track, Verdict
-from frg.show.numbers import REAL, correlation_exponent, format_complex, format_exponents, value_with_error
+from frg.records import Extrapolation, FixedPoint, Run, Step, Track, Verdict, counted
+from frg.show.numbers import (
+    REAL,
+    correlation_exponent,
+    format_complex,
+    format_exponents,
+    harmless,
+    value_with_error,
+)
 
 if TYPE_CHECKING:
     from rich.console import Console
@@ -191,7 +198,7 @@ def track_line(run: Run, track: Track) -> str:
 
 def verdict_lines(verdict: Verdict) -> list[str]:
     """The verdict in words, with reasons and extrapolated exponents."""
-    count = f"{verdict.relevant} relevant direction(s), settled from order {verdict.settled_from}"
+    count = f"{counted(verdict.relevant or 0, 'relevant direction')}, settled from order {verdict.settled_from}"
     lines = [
         f"a finite number of relevant directions is {verdict.finite}"
         + (f": {count}" if verdict.relevant is not None else "")
@@ -229,11 +236,6 @@ def leading(exponents: Sequence[Extrapolation], most: int) -> list[Extrapolation
         if not pair:
             kept.append(e)
     return kept[:most]
-
-
-def harmless(text: str) -> str:
-    """The text with control characters spelled out: titles and notes of a foreign run file must not steer a terminal."""
-    return "".join(c if c.isprintable() else c.encode("unicode_escape").decode("ascii") for c in text)
 
 
 def _line(console: Console, text: str) -> None:

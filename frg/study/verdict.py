@@ -6,7 +6,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from frg.records import Extrapolation, Growth, Step, Track, Verdict
+from frg.records import Extrapolation, Growth, Step, Track, Verdict, counted
 from frg.study.acceleration import extrapolate
 
 
@@ -114,13 +114,13 @@ def _weigh(
     if settled is None:
         missing.append("the tracked fixed point was not found at the last order")
     elif length >= settings.settled:
-        favour.append(f"{counts[-1]} relevant direction(s) at each of the last {length} steps, from order "
+        favour.append(f"{counted(counts[-1], 'relevant direction')} at each of the last {length} steps, from order "
                       f"{_order(steps[settled])} on")
     elif len(known) >= settings.settled and all(np.diff(known[-settings.settled:]) > 0):
         against.append(f"the count of relevant directions rises at each of the last {settings.settled} steps: "
                        f"{', '.join(str(c) for c in known)}")
     else:
-        missing.append(f"the count is constant only over the last {length} step(s); {settings.settled} are asked for")
+        missing.append(f"the count is constant only over the last {counted(length, 'step')}; {settings.settled} are asked for")
     if _runs_away(track, settings.runaway):
         against.append("a relevant exponent grows with the order instead of settling")
     if growth is None:

@@ -68,7 +68,7 @@ def study_track(label: str, point: int, steps: tuple[Step, ...]) -> Track:
 def study_verdict() -> Verdict:
     return Verdict(
         counts=(1,) * len(ORDERS), settled_from=2, relevant=1, finite="supported",
-        reasons=("1 relevant direction(s) at each of the last 11 steps, from order 2 on", "no order is certified"),
+        reasons=("1 relevant direction at each of the last 11 steps, from order 2 on", "no order is certified"),
         exponents=(
             Extrapolation(value=1.5394994591 + 0j, error=6.1e-8, last=1.5394994 + 0j),
             Extrapolation(value=-0.6557459391 + 0j, error=4.2e-7, last=-0.6557459 + 0j),

@@ -92,7 +92,7 @@ def test_header_tracks_and_verdict(study_run: Run) -> None:
     for words in (
         "Ising, local potential about the minimum", "regulator exponential (alpha = 2, s = 1); d = 3, N = 5/2, g = sqrt(2)",
         "status complete", "signature 0123456789ab", "track G: orders 2 to 12, 2 relevant, theta_1 2, gaussian",
-        "a finite number of relevant directions is supported: 1 relevant direction(s), settled from order 2",
+        "a finite number of relevant directions is supported: 1 relevant direction, settled from order 2",
         "- no order is certified", "theta_1 = 1.53949946(7)", "theta_3 = -3.625(2)±1.270(2)i", "theta_4 = undefined",
         "omega = -theta_2 = 0.6557459(5)",
     ):
