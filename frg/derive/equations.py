@@ -33,13 +33,17 @@ class Loop:
 @dataclass(frozen=True, kw_only=True)
 class FunctionFlow:
     """d_t of a running function at fixed coordinates. `jets` lists the derivatives that occur, as
-    orders in each coordinate. `declared` is the truncation's own description of it."""
+    orders in each coordinate. `declared` is the truncation's own description of it.
+
+    Where `rates` is not empty the flow is implicit: `rhs` is an expression that vanishes, linear in the jets
+    `symbols.rate` of d_t of the function, whose orders `rates` lists: rhs = b - M d_t f, with which M d_t f = b."""
 
     name: str
     coordinates: tuple[str, ...]
     rhs: sympy.Expr
     jets: tuple[tuple[int, ...], ...]
     declared: RunningFunction
+    rates: tuple[tuple[int, ...], ...] = ()
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -112,7 +116,9 @@ class FlowEquations:
     """The derived flow of a truncation with one regulator.
 
     `positivity` lists expressions w in the jets whose regulated propagators 1/(P + w) run in the loops:
-    a fixed point is physical only where every w > -min P. `notes` says what the derivation chose."""
+    a fixed point is physical only where every w > -min P, and where every expression of `signs` (with what to say where
+    it is not) is positive. `highest_order` is the highest order for which the equations are complete (None: all).
+    `notes` says what the derivation chose."""
 
     truncation: Truncation
     regulator: AbstractRegulator
@@ -126,3 +132,5 @@ class FlowEquations:
     positivity: tuple[sympy.Expr, ...]
     closed: bool
     notes: tuple[str, ...] = ()
+    signs: tuple[tuple[sympy.Expr, str], ...] = ()
+    highest_order: int | None = None

@@ -24,6 +24,7 @@ from frg.derive.flat.potential import (
 )
 from frg.derive.flat.wavefunction import anomalous_dimension
 from frg.derive.loops import LoopBook
+from frg.derive.sphere.flow import sphere_flow
 from frg.derive.typed.flow import typed_flow
 from frg.language.truncation import Truncation
 from frg.regulator.base import AbstractRegulator
@@ -35,7 +36,7 @@ if TYPE_CHECKING:
 def derive_flow(
     truncation: Truncation, regulator: AbstractRegulator, *, close_loops: bool = True
 ) -> FlowEquations:
-    """Derive the Wetterich flow of a flat-space or typed-in truncation.
+    """Derive the Wetterich flow of a truncation: in flat space, on the sphere, or typed in.
 
     `close_loops` does the loops of the flat shape with alpha = 1 in closed form (exact); set it to False
     to keep integrands, for example to differentiate by alpha. Raises NotYet or InputError."""
@@ -43,6 +44,8 @@ def derive_flow(
     book = LoopBook(regulator, truncation.dimension, close=close_loops, dimension_value=value)
     if truncation.flow is not None:
         return typed_flow(truncation, book)
+    if truncation.gravity is not None:
+        return sphere_flow(truncation, book)
     return _flat_flow(truncation, book)
 
 

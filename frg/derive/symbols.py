@@ -16,6 +16,16 @@ def jet(function: str, orders: Sequence[int]) -> sympy.Symbol:
     return sympy.Symbol(f"{function}{{{','.join(str(k) for k in orders)}}}")
 
 
+def rate(name: str, orders: Sequence[int] | None = None) -> sympy.Symbol:
+    """Symbol of the t-derivative of a coupling, or of a jet of a running function, on the right of a flow."""
+    import sympy
+
+    return sympy.Symbol(f"{RATE}{name}") if orders is None else jet(f"{RATE}{name}", orders)
+
+
+RATE = "d_t "
+
+
 def shape(derivative: int) -> sympy.Symbol:
     """s(y) or one of its derivatives inside a loop integrand."""
     import sympy

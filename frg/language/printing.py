@@ -7,6 +7,7 @@ from collections.abc import Iterable
 from typing import TYPE_CHECKING
 
 from frg.errors import InputError
+from frg.language.gravity import Gravity
 from frg.language.truncation import (
     Grid,
     RegulatorChoice,
@@ -34,13 +35,18 @@ def to_text(truncation: Truncation) -> str:
         space.insert(0, f"dimension = {_value(truncation.dimension)}")
     blocks.append(["[space]", *space])
     blocks.append(["[parameters]", *_pairs(truncation.parameters.items())])
-    blocks.append(["[fields]", *(_field(f) for f in truncation.fields)])
+    fields = [_field(f) for f in truncation.fields]
+    if truncation.gravity is not None:
+        fields.append(f'{truncation.gravity.metric} = "metric"')
+    blocks.append(["[fields]", *fields])
     blocks.append(["[definitions]", *_pairs(truncation.definitions.items())])
     blocks.append(["[running]", *(_running(r) for r in truncation.running)])
     if truncation.lagrangian is not None:
         blocks.append(["[action]", f"lagrangian = {_quoted(truncation.lagrangian)}"])
     if truncation.flow is not None:
         blocks.append(["[flow]", *(f"{name} = {_quoted(e)}" for name, e in truncation.flow.items())])
+    if truncation.gravity is not None:
+        blocks.append(["[gravity]", *_gravity(truncation.gravity)])
     blocks.append(["[regulator]", *_regulator(truncation.regulator)])
     study = [f"order = {_string(truncation.study.order)}"]
     if truncation.study.values:
@@ -116,6 +122,19 @@ def _running(quantity: RunningFunction | RunningCoupling | WaveFunction) -> str:
 
 def _grid(grid: Grid) -> str:
     return f"grid = {{ points = {grid.points}, upto = {float(grid.upto)!r} }}"
+
+
+def _gravity(gravity: Gravity) -> list[str]:
+    gauge = gravity.gauge
+    alpha_beta = f"{{ alpha = {_value(gauge.alpha)}, beta = {_value(gauge.beta)} }}" if gauge.beta is not None else '"harmonic"'
+    return [
+        f"gauge = {alpha_beta}",
+        f'cutoff = "{gravity.cutoff}"',
+        f"endomorphism = {{ {', '.join(_pairs(gravity.endomorphism.items()))} }}",
+        f'parametrisation = "{gravity.parametrisation}"',
+        f'approximation = "{"one-loop" if gravity.one_loop else "full"}"',
+        f"matter = {{ {', '.join(_pairs(gravity.matter.items()))} }}",
+    ]
 
 
 def _regulator(choice: RegulatorChoice) -> list[str]:

@@ -9,8 +9,10 @@ from typing import TYPE_CHECKING
 
 from frg.errors import InputError, NotYet, Place
 from frg.language.action import check_action
+from frg.language.curvature import CURVATURE, check_curvature_action
 from frg.language.document import Document, load_document, read_text
 from frg.language.grammar import parse
+from frg.language.gravity import read_gravity
 from frg.language.names import LORENTZ, RESERVED, RESERVED_CALLS, NameTable, is_name, suggestion
 from frg.language.sections import (
     Running,
@@ -18,6 +20,7 @@ from frg.language.sections import (
     read_definitions,
     read_dimension,
     read_fields,
+    read_metric,
     read_parameters,
     read_running,
 )
@@ -39,11 +42,11 @@ SECTIONS = (
     "running",
     "action",
     "flow",
+    "gravity",
     "regulator",
     "study",
 )
 _LATER = {
-    "gravity": "type the beta functions into [flow], or use flat space with scalar fields",
     "family": "run the members one by one",
 }
 
@@ -68,21 +71,25 @@ def read_truncation_text(text: str, *, source: str, overrides: Mapping[str, str]
     document = load_document(text, source)
     _check_sections(document)
     typed = _is_typed(document)
-    kinds = _claim_names(document, typed=typed)
+    geometry = document.choice(("space", "geometry"), ("flat", "sphere"), "flat")
+    sphere = geometry == "sphere" and not typed
+    metric = read_metric(document, sphere=sphere)
+    kinds = _claim_names(document, typed=typed, sphere=sphere)
     parameters = read_parameters(document, overrides or {})
     dimension = read_dimension(document, parameters, optional=typed)
     fields = read_fields(document, parameters)
     of_kind = {name: kind for name, kind in kinds.items() if kind in ("parameter", "field")}
     definitions = read_definitions(document, of_kind)
     study = read_study(document)
-    running = read_running(document, parameters, study.order, None if typed else definitions)
+    coordinates: Mapping[str, object] | None = None if typed else ({CURVATURE: None} if sphere else definitions)
+    running = read_running(document, parameters, study.order, coordinates)
     truncation = Truncation(
         title=document.string(("title",), '"…"'),
         reference=None if document.get(("reference",)) is None else document.string(("reference",), '"…"'),
         text=text,
         source=source,
         dimension=dimension,
-        geometry="flat",
+        geometry=geometry,
         parameters=parameters,
         fields=fields,
         definitions=definitions,
@@ -91,6 +98,7 @@ def read_truncation_text(text: str, *, source: str, overrides: Mapping[str, str]
         flow=_flow(document, kinds, running, dimension) if typed else None,
         regulator=read_regulator(document),
         study=study,
+        gravity=read_gravity(document, metric, parameters) if metric is not None else None,
     )
     _check_orders(document, truncation)
     if not typed:
@@ -103,7 +111,7 @@ def _check_action(document: Document, truncation: Truncation) -> None:
     path = ("action", "lagrangian")
     start = document.value_place(path)
     try:
-        check_action(truncation, place=start)
+        (check_action if truncation.gravity is None else check_curvature_action)(truncation, place=start)
     except InputError as error:
         text, fragment = document.string(path, '"…"'), error.place.text or ""
         words = re.findall(r"\w+|[^\w\s]", fragment)
@@ -119,12 +127,6 @@ def _check_sections(document: Document) -> None:
     document.check_keys((), SECTIONS, _LATER)
     document.check_keys(("space",), ("dimension", "geometry"))
     document.check_keys(("action",), ("lagrangian",))
-    if document.choice(("space", "geometry"), ("flat", "sphere"), "flat") == "sphere":
-        raise NotYet(
-            'geometry = "sphere" ([space] geometry) is not supported yet',
-            remedy='use geometry = "flat", or type the beta functions into [flow]',
-            place=document.value_place(("space", "geometry")),
-        )
     if document.get(("title",)) is None:
         document.fail("the truncation has no title", 'add title = "…" at the top', (), key=True)
     if not document.table(("running",)):
@@ -150,9 +152,9 @@ def _is_typed(document: Document) -> bool:
     return flow
 
 
-def _claim_names(document: Document, *, typed: bool) -> dict[str, str]:
+def _claim_names(document: Document, *, typed: bool, sphere: bool) -> dict[str, str]:
     """Every name of the file with what it is; a name may be declared only once."""
-    kinds: dict[str, str] = {}
+    kinds: dict[str, str] = {CURVATURE: "curvature"} if sphere else {}
 
     def claim(name: str, kind: str, path: Path) -> None:
         if not is_name(name):
@@ -223,7 +225,7 @@ def _lagrangian(document: Document, kinds: Mapping[str, str], running: tuple[Run
     if document.get(path) is None:
         document.fail("[action] has no lagrangian", 'add lagrangian = "d(phi,mu)^2/2 + U(rho)"', ("action",), key=True)
     text = document.string(path, '"d(phi,mu)^2/2 + U(rho)"')
-    plain = ("parameter", "field", "definition", "coupling", "wave function")
+    plain = ("parameter", "field", "definition", "coupling", "wave function", "curvature")
     names = NameTable(
         names={n: k for n, k in kinds.items() if k in plain},
         functions=_arities(running),

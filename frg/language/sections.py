@@ -52,7 +52,7 @@ def exact_number(document: Document, path: Path, text: str) -> sympy.Expr:
     return -number if text.startswith("-") else number
 
 
-def _constant(document: Document, path: Path, value: sympy.Expr, parameters: Mapping[str, sympy.Expr]) -> float:
+def constant(document: Document, path: Path, value: sympy.Expr, parameters: Mapping[str, sympy.Expr]) -> float:
     """The double nearest to an expression with the parameters put in; errors at `path`."""
     try:
         number = constant_value(substitute(value, parameters))
@@ -82,7 +82,7 @@ def read_parameters(document: Document, overrides: Mapping[str, str]) -> dict[st
             continue
         earlier = NameTable(names=dict.fromkeys(values, "parameter"), advice="declare it further up in [parameters]")
         value = expression(document, path, earlier)
-        _constant(document, path, value, values)
+        constant(document, path, value, values)
         values[name] = substitute(value, values)
     return values
 
@@ -111,7 +111,7 @@ def read_dimension(document: Document, parameters: Mapping[str, sympy.Expr], *, 
             return sympy.nan
         document.fail("[space] dimension is missing", "add [space] with dimension = 3", ("space",), key=True)
     value = expression(document, path, parameter_names(parameters))
-    number = _constant(document, path, value, parameters)
+    number = constant(document, path, value, parameters)
     if number <= 0:
         document.fail(f"the dimension is {number:g}", "give a dimension above 0", path)
     return value
@@ -137,10 +137,13 @@ def read_fields(document: Document, parameters: Mapping[str, sympy.Expr]) -> tup
                     key=True,
                 )
         kind = document.choice(path, ("scalar", "dirac", "metric"), "scalar")
+        if kind == "metric":
+            continue
         if kind != "scalar":
             raise NotYet(
                 f"fields of kind {kind!r} ([fields] {name}) are not supported yet",
-                remedy="use scalar fields, or type the beta functions into [flow]",
+                remedy="use scalar fields, count minimally coupled ones in [gravity] matter, or type the beta functions "
+                "into [flow]",
                 place=document.value_place(path),
             )
         components: sympy.Expr = sympy.Integer(1)
@@ -149,9 +152,34 @@ def read_fields(document: Document, parameters: Mapping[str, sympy.Expr]) -> tup
             if "components" in value:
                 where = ("fields", name, "components")
                 components = expression(document, where, parameter_names(parameters))
-                _constant(document, where, components, parameters)
+                constant(document, where, components, parameters)
         found.append(ScalarField(name=name, components=components))
     return tuple(found)
+
+
+def read_metric(document: Document, *, sphere: bool) -> str | None:
+    """The name of the metric; it belongs to the sphere, and the sphere to it."""
+    names = []
+    for name, value in document.table(("fields",)).items():
+        kind = value.get("kind") if isinstance(value, dict) else value
+        if kind == "metric":
+            names.append(name)
+        elif sphere:
+            document.fail(
+                f"{name} beside a metric is not supported: fields on the sphere are minimally coupled and enter by number",
+                "write [gravity] matter = { scalars = 1 }", ("fields", name), key=True,
+            )
+    if not sphere:
+        if names:
+            document.fail('a metric needs geometry = "sphere"', 'add geometry = "sphere" to [space]', ("fields", names[0]))
+        if document.get(("gravity",)) is not None:
+            document.fail(
+                '[gravity] needs geometry = "sphere"', 'add geometry = "sphere" to [space]', ("gravity",), key=True
+            )
+        return None
+    if len(names) != 1:
+        document.fail("a truncation of gravity has one metric", 'write [fields] with g = "metric"', ("fields",), key=True)
+    return str(names[0])
 
 
 def read_definitions(document: Document, known: Mapping[str, str]) -> dict[str, sympy.Expr]:
@@ -207,7 +235,7 @@ def _point(document: Document, path: Path, parameters: Mapping[str, sympy.Expr])
         return "minimum"
     names = dataclasses.replace(parameter_names(parameters), advice='write "minimum", a number or parameters')
     value = expression(document, path, names)
-    _constant(document, path, value, parameters)
+    constant(document, path, value, parameters)
     return value
 
 

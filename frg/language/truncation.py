@@ -9,6 +9,7 @@ definition, coupling) is looked up in the tables of the truncation, never in the
 * `d(phi, mu, ...)`: `sympy.Function("d")(phi, mu, ...)`
 * threshold functions of typed-in flows: `sympy.Function("l")(n, w[, eta])`
 * `vd` in typed-in flows: `sympy.Symbol("vd")`
+* the curvature scalar of the sphere: `sympy.Symbol("R")`
 """
 
 from __future__ import annotations
@@ -18,6 +19,7 @@ from typing import TYPE_CHECKING
 
 from frg.errors import InputError, Place
 from frg.language.algebra import Refused, constant_value, substitute
+from frg.language.gravity import Gravity
 
 if TYPE_CHECKING:
     import sympy
@@ -117,6 +119,7 @@ class Truncation:
     flow: dict[str, sympy.Expr] | None
     regulator: RegulatorChoice
     study: StudySettings
+    gravity: Gravity | None = None
 
     @property
     def functions(self) -> tuple[RunningFunction, ...]:

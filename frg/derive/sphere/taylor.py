@@ -1,0 +1,3 @@
+"""placeholder"""
+def taylor_traces(truncation, traces, functionals):
+    raise RuntimeError
