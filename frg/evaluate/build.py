@@ -263,6 +263,8 @@ def natural_units(flow: Flow, args: Arguments) -> tuple[float, float]:
     a constant mass, summed over all modes, which is where the loops put the minimum of a potential."""
     jax, jnp, _ = load()
     equations = flow.equations
+    if equations.truncation.gravity is not None:
+        return SPHERE_RADIUS, (4 * math.pi) ** (-dimension_value(equations) / 2)
     source = equations.potential or (equations.functions[0] if equations.functions else None)
     if source is None:
         return 1.0, 1.0
@@ -285,6 +287,8 @@ def natural_units(flow: Flow, args: Arguments) -> tuple[float, float]:
     return size, size
 
 
+# functions of the curvature: their series converge for R below about k^2, and the heat kernel's prefactor is their size
+SPHERE_RADIUS = 0.82
 SERIES_REACH = 3.0  # potentials vary over a few natural units of the coordinate: the unit of a series' variable
 
 
@@ -301,7 +305,7 @@ def natural_scale(flow: Flow, args: Arguments) -> np.ndarray:
     """(size,) scale of every unknown from the natural units."""
     coordinate, value = natural_units(flow, args)
     own = flow.block.unit(coordinate, value) if flow.block is not None else np.zeros(0)
-    if isinstance(flow.block, Taylor):
+    if isinstance(flow.block, Taylor) and flow.equations.truncation.gravity is None:
         own = stretched_scale(flow.block, own, SERIES_REACH)
     rest = [coordinate if name == "minimum{}" else 1.0 for name in flow.names[len(own):]]
     return np.concatenate([own, rest])

@@ -11,10 +11,12 @@ from typing import Any, NamedTuple
 
 import numpy as np
 
+from frg.derive import symbols
 from frg.derive.equations import FlowEquations, Loop
 from frg.evaluate.discretisation import AbstractDiscretisation
 from frg.evaluate.jaxload import load
 from frg.evaluate.series import Series, series_arithmetic
+from frg.evaluate.slopes import LocalSlopes, has_slopes
 from frg.language.program import Program, compile_expressions
 
 
@@ -86,6 +88,18 @@ class Flow:
         return compile_expressions([a.rhs for a in self.equations.anomalous])
 
     @cached_property
+    def slopes(self) -> LocalSlopes | None:
+        """The flow with its derivatives in closed form, where it has them."""
+        if not has_slopes(self.equations, self.block):
+            return None
+        return LocalSlopes(equations=self.equations, block=self.block)  # type: ignore[arg-type]
+
+    @cached_property
+    def implicit(self) -> bool:
+        """True where d_t of a function stands on the right too: M(g) is then part of the flow."""
+        return any(f.rates for f in self.equations.functions)
+
+    @cached_property
     def _masses(self) -> Program:
         return compile_expressions(list(self.equations.positivity))
 
@@ -136,20 +150,27 @@ class Flow:
         (value,) = compile_expressions([at]).run(args.parameters, series_arithmetic())
         return value
 
-    def environment(self, g: Any, args: Arguments) -> dict[str, Any]:
-        """Values of everything that can occur in a right-hand side."""
+    def environment(self, g: Any, args: Arguments, moving: Any = None) -> dict[str, Any]:
+        """Values of everything that can occur in a right-hand side; `moving` (size,) are dg/dt on the right of an
+        implicit flow, zero by default."""
+        jnp = load().numpy
         block_g, coupled, _ = self._split(g)
         env = {**args.parameters, **coupled, **self.anomalous_dimensions(g, args)}
         if self.block is not None:
             env |= self.block.numbers(block_g, args.box)
+            if self.implicit:
+                rates = self.block.numbers(jnp.zeros_like(block_g) if moving is None else moving, args.box)
+                for f in self.equations.functions:
+                    for orders in f.rates:
+                        env[symbols.rate(f.name, orders).name] = rates[symbols.jet(f.name, orders).name]
         return env
 
-    def right_side(self, g: Any, args: Arguments) -> Any:
-        """(size,) b(g) in reported normalisation, conditions included."""
+    def right_side(self, g: Any, args: Arguments, moving: Any = None) -> Any:
+        """(size,) b(g) in reported normalisation, conditions included; with `moving`, b(g) - M(g) moving."""
         jnp = load().numpy
         block_g, _, minimum = self._split(g)
-        values = dict(zip(self.rhs_names, self._with_loops(self.rhs, self.environment(g, args), args.rule),
-                          strict=True))
+        env = self.environment(g, args, moving)
+        values = dict(zip(self.rhs_names, self._with_loops(self.rhs, env, args.rule), strict=True))
         parts = []
         if self.block is not None:
             parts.append(self.block.rows(block_g, values))
@@ -161,7 +182,9 @@ class Flow:
 
     def mass_matrix(self, g: Any, args: Arguments) -> Any:
         """(size, size) M(g) in reported normalisation; rows of conditions are zero."""
-        jnp = load().numpy
+        jax, jnp, _ = load()
+        if self.implicit:
+            return -jax.jacfwd(lambda rate: self.right_side(g, args, rate))(jnp.zeros_like(g))
         block_g, _, _ = self._split(g)
         count = self.block.size if self.block else 0
         full = jnp.diag(jnp.where(self.algebraic, 0.0, 1.0))
@@ -181,6 +204,18 @@ class Flow:
             b = jnp.concatenate([self.block.search_rows(g[:own], b[:own]), b[own:]])
         return jnp.where(active, b / self._row_scale(args), c)
 
+    def linearised_residual(self, c: Any, active: Any, args: Arguments) -> tuple[Any, Any]:
+        """(residual, its derivative by c): (size,), (size, size)."""
+        jax, jnp, _ = load()
+        if self.slopes is None:
+            return self.residual(c, active, args), jax.jacfwd(lambda c: self.residual(c, active, args))(c)
+        g = jnp.where(active, c * args.scale, 0.0)
+        b, slope, _ = self.slopes.evaluate(g, args.parameters, args.box)
+        rows = self._row_scale(args)
+        scaled = slope * args.scale[None, :] / rows[:, None]
+        inside = active[:, None] & active[None, :]
+        return jnp.where(active, b / rows, c), jnp.where(inside, scaled, jnp.eye(self.size))
+
     def _row_scale(self, args: Arguments) -> Any:
         """Rows in the scale of their unknown; a condition U'(x) = 0 in the scale of U/x."""
         jnp = load().numpy
@@ -193,6 +228,10 @@ class Flow:
         """(b, db/dc, M) scaled, for all unknowns; select the active block outside."""
         jax, jnp, _ = load()
         rows = self._row_scale(args)
+        if self.slopes is not None:
+            b, slope, mass = self.slopes.evaluate(c * args.scale, args.parameters, args.box)
+            ratio = args.scale[None, :] / rows[:, None]
+            return b / rows, slope * ratio, mass * ratio
 
         def scaled(c: Any) -> Any:
             return self.right_side(c * args.scale, args) / rows

@@ -80,8 +80,7 @@ class BatchNewton:
 
         def advance(state: Any) -> Any:
             c, _, count = state
-            value = residual(c)
-            jacobian = jax.jacfwd(residual)(c)
+            value, jacobian = self.flow.linearised_residual(c, active, args)
             # rows in units of their own response, so that the norm does not depend on how equations are scaled
             weight = 1 / jnp.maximum(jnp.sum(jnp.abs(jacobian), axis=1), 1e-300)
             p = solve_small(jacobian * weight[:, None], -value * weight)
