@@ -6,6 +6,7 @@ from frg.solve.fixedpoint import Judgement
 from frg.solve.functional import GridNewton
 from frg.solve.ladder import LadderScan
 from frg.solve.newton import Newton
+from frg.solve.planeladder import PlaneScan
 from frg.solve.search import SearchSettings
 from frg.solve.shooting import ShootingScan
 from frg.study.convergence import StudySettings
@@ -30,6 +31,7 @@ def search_settings(*, thorough: bool, single: bool = False) -> SearchSettings:
             reaches=(2.5, 3.0, 4.0, 5.0, 6.5, 8.0), steps=500, rounds=8,
         ),
         grid=GridNewton(iterations=40, halvings=8, step=1e-9),
+        plane=PlaneScan(first=8.0, second=12.0, points=241 if thorough else 121),
         grid_agreement=1e-5,
         judgement=Judgement(marginal=1e-6, residual=1e-8, gaussian=1e-7),
     )

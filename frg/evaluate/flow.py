@@ -103,6 +103,10 @@ class Flow:
     def _masses(self) -> Program:
         return compile_expressions(list(self.equations.positivity))
 
+    @cached_property
+    def _signs(self) -> Program:
+        return compile_expressions([e for e, _ in self.equations.signs])
+
     # ---- evaluation in reported unknowns -------------------------------------------------------
 
     def _split(self, g: Any) -> tuple[Any, dict[str, Any], Any]:
@@ -251,6 +255,15 @@ class Flow:
                     name = f"{function.name}{{{','.join(map(str, orders))}}}"
                     env[name] = self.block.jets_at(block_g, x, function.name, orders, args.box)
         return jnp.stack([jnp.asarray(v) for v in self._masses.run(env, series_arithmetic())])
+
+
+def broken_signs(flow: Flow, g: Any, args: Arguments) -> list[str]:
+    """What to say of expressions that must be positive at the point of expansion and are not."""
+    if not flow.equations.signs:
+        return []
+    values = flow._signs.run(flow.environment(g, args), series_arithmetic())
+    plain = [float(v.coefficients[0] if isinstance(v, Series) else v) for v in values]
+    return [text for v, (_, text) in zip(plain, flow.equations.signs, strict=True) if not v > 0]
 
 
 def masses_at_centre(flow: Flow, g: Any, args: Arguments) -> Any:

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from frg.derive.equations import FlowEquations
 from frg.evaluate.build import loop_rule
+from frg.solve.curvaturesearch import CurvatureSearch
 from frg.solve.gridsearch import GridSearch
 from frg.solve.search import AbstractSearch, PolynomialSearch, SearchSettings
 
@@ -20,6 +21,10 @@ def make_search(
         grid = GridSearch(equations=equations, settings=settings)
         grid.problem.flow  # noqa: B018  (refuses what a grid cannot do)
         return grid
+    if equations.truncation.gravity is not None and equations.functions:
+        curvature = CurvatureSearch(equations=equations, orders=orders, settings=settings)
+        curvature.flow  # noqa: B018  (likewise)
+        return curvature
     polynomial = PolynomialSearch(equations=equations, orders=orders, settings=settings)
     polynomial.flow  # noqa: B018  (likewise)
     return polynomial

@@ -10,7 +10,7 @@ import numpy as np
 
 from frg.evaluate.build import natural_units, stretched_scale
 from frg.evaluate.fieldpolynomial import FieldPolynomial
-from frg.evaluate.flow import Arguments, Flow, masses_at_centre
+from frg.evaluate.flow import Arguments, Flow, broken_signs, masses_at_centre
 from frg.evaluate.grid import ChebyshevGrid
 from frg.evaluate.jaxload import load
 from frg.evaluate.odd import odd_active, odd_operator, odd_scale
@@ -279,6 +279,9 @@ def _outside_domain(examiner: Examiner, measured: Measured, args: Arguments, uni
             return "the minimum lies at a negative value of the coordinate"
         if g[block.layout.index((0, 2))] < 0:
             return "the expansion point is a maximum of the potential"
+    broken = broken_signs(flow, g, args)
+    if broken:
+        return broken[0]
     if not flow.equations.positivity:
         return None
     if not isinstance(block, FieldPolynomial) and not flow.equations.functions:

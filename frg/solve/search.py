@@ -25,6 +25,7 @@ from frg.solve.fixedpoint import (
 from frg.solve.functional import GridNewton
 from frg.solve.ladder import Ladder, LadderScan, has_ladder
 from frg.solve.newton import BatchNewton, Newton
+from frg.solve.planeladder import PlaneScan
 from frg.solve.shooting import ShootingScan
 
 
@@ -42,15 +43,19 @@ class SearchSettings:
     ladder: LadderScan
     shooting: ShootingScan
     grid: GridNewton
+    plane: PlaneScan
     grid_agreement: float
     judgement: Judgement
 
 
 @dataclass(frozen=True, kw_only=True, eq=False)
 class Warm:
-    """Fixed points of the previous step as starts, in reported unknowns by name."""
+    """Fixed points of the previous step as starts, in reported unknowns by name; the physical ones of all earlier steps
+    (the last is the step before, at the value `order` of the order symbol)."""
 
     points: tuple[dict[str, float], ...] = ()
+    earlier: tuple[tuple[dict[str, float], ...], ...] = ()
+    order: int | None = None
 
 
 @dataclass(frozen=True, kw_only=True, eq=False)
@@ -176,7 +181,7 @@ class PolynomialSearch(AbstractSearch):
             good = np.isfinite(landing.unknowns).all(axis=1) & (landing.step < 1e-7)
             counts["starts"] += len(batch)
             counts["converged"] += int(good.sum())
-            new = _distinct_rows(landing.unknowns[good], roots, settings.duplicate)
+            new = distinct_rows(landing.unknowns[good], roots, settings.duplicate)
             roots = np.concatenate([roots, new])
         return roots * scale / np.asarray(self.args.scale), counts, ()
 
@@ -243,7 +248,8 @@ class PolynomialSearch(AbstractSearch):
         return kept
 
 
-def _distinct_rows(rows: np.ndarray, known: np.ndarray, tolerance: float) -> np.ndarray:
+def distinct_rows(rows: np.ndarray, known: np.ndarray, tolerance: float) -> np.ndarray:
+    """Rows that differ from the known ones and from one another by more than `tolerance`, relative to their size."""
     new: list[np.ndarray] = []
     for row in rows:
         size = max(float(np.max(np.abs(row))), 1e-12)

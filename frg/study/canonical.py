@@ -18,6 +18,8 @@ def canonical_exponents(equations: FlowEquations, flow: Flow, order: int | None)
         return None
     d = truncation.numeric(truncation.dimension)
     block = flow.block
+    if truncation.gravity is not None:
+        return _of_curvature(block, order, d)
     if isinstance(block, Taylor):
         fields = np.array([2.0 * block.algebra.degrees[k] for _, k in block.layout])
     elif isinstance(block, FieldPolynomial):
@@ -26,3 +28,11 @@ def canonical_exponents(equations: FlowEquations, flow: Flow, order: int | None)
         return None
     active = block.active(order)
     return np.sort(d - fields[active] * (d - 2) / 2)[::-1]
+
+
+def _of_curvature(block: object, order: int | None, d: float) -> np.ndarray | None:
+    """theta = d - 2n of the coefficients of R^n."""
+    if not isinstance(block, Taylor):
+        return None
+    powers = np.array([float(block.algebra.degrees[k]) for _, k in block.layout])
+    return np.sort(d - 2 * powers[block.active(order)])[::-1]

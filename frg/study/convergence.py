@@ -11,6 +11,7 @@ from frg.derive.equations import FlowEquations
 from frg.errors import InputError, Place
 from frg.records import Step, Track, Verdict
 from frg.solve.choose import make_search
+from frg.solve.curvaturesearch import physical_points
 from frg.solve.search import AbstractSearch, PolynomialSearch, SearchSettings, Warm, run_step
 from frg.study.canonical import canonical_exponents
 from frg.study.tracking import TrackingSettings, track_points
@@ -37,16 +38,12 @@ class ConvergenceStudy:
 
     def steps(self, done: tuple[Step, ...] = ()) -> Iterator[Step]:
         """Steps after those already `done` (the first orders, from an interrupted run). The result does not
-        depend on whether the study was interrupted: a step sees only its order and the step before."""
+        depend on whether the study was interrupted: a step sees only its order and the steps before."""
         name = self.equations.truncation.study.order
-        previous = done[-1] if done else None
+        known = list(done)
         for order in self.orders[len(done):]:
-            warm = Warm(points=tuple(
-                dict(zip(p.names, (float(c) for c in p.couplings), strict=True))
-                for p in (previous.fixed_points if previous else ())
-            ))
-            previous = run_step(self.search, name, order, warm)
-            yield previous
+            known.append(run_step(self.search, name, order, warm_start(known, self.orders)))
+            yield known[-1]
 
     def conclude(self, steps: tuple[Step, ...]) -> tuple[tuple[Track, ...], Verdict]:
         """Tracks and the verdict from all steps."""
@@ -56,6 +53,19 @@ class ConvergenceStudy:
             flow = self.search.flow
             canonical = [canonical_exponents(self.equations, flow, n) for n in self.orders[: len(steps)]]
         return tracks, judge(steps, tracks, canonical, self.settings.verdict)
+
+
+def warm_start(known: list[Step], orders: tuple[int, ...]) -> Warm:
+    """What the next step may start from: the steps before it."""
+    if not known:
+        return Warm()
+    return Warm(
+        points=tuple(
+            dict(zip(p.names, (float(c) for c in p.couplings), strict=True)) for p in known[-1].fixed_points
+        ),
+        earlier=tuple(tuple(physical_points(step.fixed_points)) for step in known),
+        order=orders[len(known) - 1],
+    )
 
 
 def convergence_study(
