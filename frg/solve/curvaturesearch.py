@@ -11,6 +11,7 @@ tracking of the study.
 
 from __future__ import annotations
 
+import dataclasses
 from dataclasses import dataclass, field
 from functools import cached_property
 
@@ -28,7 +29,6 @@ from frg.solve.search import PolynomialSearch, Warm, distinct_rows, ranked
 COMPLETE = 6  # highest order at which the box is searched for all fixed points
 PERIOD = 8
 FOLLOWED = 8  # fixed points of the order before that are followed
-DISPLACED = 12
 STARTS = 16  # a compiled call
 LEADING = 3
 Point = dict[str, float]
@@ -48,7 +48,9 @@ class CurvatureSearch(PolynomialSearch):
 
     @cached_property
     def _newton(self) -> BatchNewton:
-        return BatchNewton(flow=self.flow, newton=self.settings.newton, batch=STARTS, known=1)
+        # starts are near: those that have not converged soon will not
+        newton = dataclasses.replace(self.settings.newton, iterations=15, halvings=2)
+        return BatchNewton(flow=self.flow, newton=newton, batch=STARTS, known=1)
 
     def find(self, order: int | None, warm: Warm) -> tuple[list[FixedPoint], dict[str, int], tuple[str, ...]]:
         assert order is not None
@@ -113,10 +115,12 @@ class CurvatureSearch(PolynomialSearch):
         centre = np.mean(rows, axis=0)
         previous = [self._vector(p) / scale for p in history[-1]]
         previous.sort(key=lambda c: float(np.max(np.abs(c - rows[-1])[:LEADING])))
-        starts = [*previous[:FOLLOWED], centre, rows[0]]
+        before = [self._vector(p) / scale for p in history[-PERIOD]] if len(history) >= PERIOD else []
+        before.sort(key=lambda c: float(np.max(np.abs(c - centre)[:LEADING])))
+        starts = [*previous[:FOLLOWED], *before[:FOLLOWED], centre]
         rng = np.random.default_rng([self.settings.stream, order])
         spread = np.max(np.abs(np.array(rows) - centre), axis=0)
-        for _ in range(DISPLACED * (4 if self.settings.rounds > 4 else 1)):
+        for _ in range(2 * STARTS * (4 if self.settings.rounds > 4 else 1) - len(starts)):
             starts.append(centre + spread * rng.uniform(-1.5, 1.5, len(centre)))
         batch = np.where(active, np.array(starts), 0.0)
         landing = self._newton.run(batch, active, self.args, np.zeros((0, self.flow.size)))
