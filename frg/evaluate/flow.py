@@ -257,13 +257,11 @@ class Flow:
         return jnp.stack([jnp.asarray(v) for v in self._masses.run(env, series_arithmetic())])
 
 
-def broken_signs(flow: Flow, g: Any, args: Arguments) -> list[str]:
-    """What to say of expressions that must be positive at the point of expansion and are not."""
-    if not flow.equations.signs:
-        return []
+def sign_values(flow: Flow, g: Any, args: Arguments) -> Any:
+    """(k,) values at the point of expansion of the expressions that must be positive."""
+    jnp = load().numpy
     values = flow._signs.run(flow.environment(g, args), series_arithmetic())
-    plain = [float(v.coefficients[0] if isinstance(v, Series) else v) for v in values]
-    return [text for v, (_, text) in zip(plain, flow.equations.signs, strict=True) if not v > 0]
+    return jnp.stack([v.coefficients[0] if isinstance(v, Series) else jnp.asarray(v) for v in values])
 
 
 def masses_at_centre(flow: Flow, g: Any, args: Arguments) -> Any:

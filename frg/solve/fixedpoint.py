@@ -10,7 +10,7 @@ import numpy as np
 
 from frg.evaluate.build import natural_units, stretched_scale
 from frg.evaluate.fieldpolynomial import FieldPolynomial
-from frg.evaluate.flow import Arguments, Flow, broken_signs, masses_at_centre
+from frg.evaluate.flow import Arguments, Flow, masses_at_centre, sign_values
 from frg.evaluate.grid import ChebyshevGrid
 from frg.evaluate.jaxload import load
 from frg.evaluate.odd import odd_active, odd_operator, odd_scale
@@ -65,6 +65,14 @@ class Examiner:
     def _masses(self) -> Any:
         jax = load().jax
         return jax.jit(jax.vmap(self.flow.masses, in_axes=(None, 0, None)))
+
+    @cached_property
+    def _signs(self) -> Any:
+        return load().jax.jit(lambda g, args: sign_values(self.flow, g, args))
+
+    def signs(self, g: np.ndarray, args: Arguments) -> np.ndarray:
+        """(k,) values of the expressions that must be positive."""
+        return np.asarray(self._signs(g, args))
 
     @cached_property
     def _eta(self) -> Any:
@@ -279,9 +287,11 @@ def _outside_domain(examiner: Examiner, measured: Measured, args: Arguments, uni
             return "the minimum lies at a negative value of the coordinate"
         if g[block.layout.index((0, 2))] < 0:
             return "the expansion point is a maximum of the potential"
-    broken = broken_signs(flow, g, args)
-    if broken:
-        return broken[0]
+    if flow.equations.signs:
+        signs = examiner.signs(g, args)
+        broken = [text for v, (_, text) in zip(signs, flow.equations.signs, strict=True) if not v > 0]
+        if broken:
+            return broken[0]
     if not flow.equations.positivity:
         return None
     if not isinstance(block, FieldPolynomial) and not flow.equations.functions:
