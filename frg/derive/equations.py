@@ -118,6 +118,7 @@ class FlowEquations:
     `positivity` lists expressions w in the jets whose regulated propagators 1/(P + w) run in the loops:
     a fixed point is physical only where every w > -min P, and where every expression of `signs` (with what to say where
     it is not) is positive. `highest_order` is the highest order for which the equations are complete (None: all).
+    `quotients` are the (numerator, denominator) pairs under the traces of an open flow on the sphere, for guards.
     `notes` says what the derivation chose."""
 
     truncation: Truncation
@@ -134,3 +135,4 @@ class FlowEquations:
     notes: tuple[str, ...] = ()
     signs: tuple[tuple[sympy.Expr, str], ...] = ()
     highest_order: int | None = None
+    quotients: tuple[tuple[sympy.Expr, sympy.Expr], ...] = ()

@@ -82,7 +82,14 @@ def degree_table(function: RunningFunction, equations: FlowEquations, orders: tu
     """Highest power kept, by value of the order symbol; {0: degree} where a truncation has no order axis.
 
     Raises InputError where an order leaves no coupling."""
-    return {n: equations.truncation.order_of(function, n) or 0 for n in orders or (0,)}
+    table = {n: equations.truncation.order_of(function, n) or 0 for n in orders or (0,)}
+    limit = equations.highest_order
+    if limit is not None and max(table.values()) > limit:
+        raise InputError(
+            f"the traces are derived up to order {limit} here, and order {max(table.values())} is asked for",
+            remedy="lower the order, or use the flat shape in an even dimension", place=_place(equations),
+        )
+    return table
 
 
 def _taylor(equations: FlowEquations, orders: tuple[int, ...]) -> Taylor:

@@ -28,7 +28,10 @@ def check_curvature_action(truncation: Truncation, *, place: Place | None = None
     for call in sorted(lagrangian.atoms(sympy.core.function.AppliedUndef), key=str):
         name = type(call).__name__
         if name == "d":
-            fail("derivatives of fields have no place in an action of the metric", "count matter in [gravity] matter", str(call))
+            fail(
+                "derivatives of fields have no place in an action of the metric", "count matter in [gravity] matter",
+                str(call),
+            )
         if name not in {f.name for f in truncation.functions}:
             fail(f"{name} is called in the action and is not in [running]", f"add {name} to [running]", str(call))
         if [str(a) for a in call.args] != [CURVATURE]:

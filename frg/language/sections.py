@@ -319,7 +319,7 @@ def _grid(document: Document, path: Path, parameters: Mapping[str, sympy.Expr]) 
         document.fail("grid.points must be a whole number", f"give 4 to {MOST_GRID_POINTS} points", (*path, "points"))
     if document.get((*path, "upto")) is None:
         document.fail("the grid has no upto", "add upto = 6.0, in units of the minimum", path, key=True)
-    upto = _constant(
+    upto = constant(
         document,
         (*path, "upto"),
         expression(document, (*path, "upto"), parameter_names(parameters)),

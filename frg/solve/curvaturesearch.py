@@ -27,6 +27,7 @@ from frg.solve.planeladder import PlaneLadder, PlaneScan
 from frg.solve.search import PolynomialSearch, Warm, distinct_rows, ranked
 
 COMPLETE = 6  # highest order at which the box is searched for all fixed points
+LOWEST = 3  # where histories begin
 PERIOD = 8
 FOLLOWED = 8  # fixed points of the order before that are followed
 STARTS = 16  # a compiled call
@@ -134,24 +135,24 @@ class CurvatureSearch(PolynomialSearch):
         """Fixed points of the orders below, found here where a study has not found them already."""
         block = self.flow.block
         assert isinstance(block, Taylor)
-        degree_at = block.functions[0].degree_at
-        power = degree_at[order]
-        start = max(2, COMPLETE - 3)
-        for lower in range(start, power):
-            if lower not in self._chain:
-                self._chain[lower] = self._points_at(lower, start)
-        return [self._chain[k] for k in range(start, power)]
+        return self.history_below(block.functions[0].degree_at[order])
 
-    def _points_at(self, power: int, start: int) -> list[Point]:
+    def history_below(self, power: int) -> list[list[Point]]:
+        """Physical fixed points with highest powers of R from `LOWEST` up to below `power`, which the flow must hold."""
+        for lower in range(LOWEST, power):
+            if lower not in self._chain:
+                self._chain[lower] = self._points_at(lower)
+        return [self._chain[k] for k in range(LOWEST, power)]
+
+    def _points_at(self, power: int) -> list[Point]:
         degrees = self.flow.block.algebra.degrees  # type: ignore[union-attr]
         active = np.array([degrees[k] <= power for _, k in self.flow.block.layout])  # type: ignore[union-attr]
         if power <= COMPLETE:
             roots, counts, _ = self._scan(power)
         else:
-            earlier = tuple(tuple(self._chain[k]) for k in range(start, power))
+            earlier = tuple(tuple(self._chain[k]) for k in range(LOWEST, power))
             roots, counts, _ = self._follow(power, power, active, Warm(earlier=earlier, order=power - 1))
-        records = [self._record(m, power) for m in self._measured(roots, active, counts)]
-        return physical_points(records)
+        return physical_points([self._record(m, power) for m in self._measured(roots, active, counts)])
 
 
 def physical_points(records: list[FixedPoint] | tuple[FixedPoint, ...]) -> list[Point]:
@@ -163,7 +164,7 @@ def physical_points(records: list[FixedPoint] | tuple[FixedPoint, ...]) -> list[
 
 def smoothest_chain(history: list[list[Point]], names: tuple[str, ...]) -> list[Point]:
     """One fixed point an order, from the last order back each time the nearest in the leading couplings: the chain with the
-    least mean step over at most the last eight orders."""
+    least relative steps over at most the last eight orders."""
     steps = [h for h in history if h][-PERIOD:]
 
     def leading(p: Point) -> np.ndarray:
@@ -174,12 +175,17 @@ def smoothest_chain(history: list[list[Point]], names: tuple[str, ...]) -> list[
         chain, total = [end], 0.0
         for step in reversed(steps[:-1]):
             here = leading(chain[0])
-            nearest = min(step, key=lambda p: float(np.linalg.norm(leading(p) - here)))
-            total += float(np.linalg.norm(leading(nearest) - here))
+            gaps = [_relative(leading(p), here) for p in step]
+            nearest = step[int(np.argmin(gaps))]
+            total += min(gaps)
             chain.insert(0, nearest)
         if total < best[0]:
             best = (total, chain)
     return best[1]
+
+
+def _relative(a: np.ndarray, b: np.ndarray) -> float:
+    return float(np.linalg.norm(a - b) / max(np.linalg.norm(a), np.linalg.norm(b), 1e-300))
 
 
 def newton_and_cosmological(g: np.ndarray) -> dict[str, float]:

@@ -13,11 +13,12 @@ WINDOWS = (1, 2, 8)  # steps averaged: sequences that converge fast need few, th
 TRIED = 4  # predictions after which a predictor can be preferred
 
 RULE = (
-    f"least sum of squared distances: the first {LEADING} couplings and exponents of a root are compared, each relative to its size "
-    f"(couplings: the largest over the last {WINDOWS[-1]} steps, for they may pass through zero), with what is expected of the "
-    f"track: its last step, its mean over the last {WINDOWS[1]} or {WINDOWS[2]} steps, or its step {WINDOWS[-1]} before, whichever "
-    "has been nearest so far. Of all chains of roots the one with the least sum of squared distances is a track, a step without root "
-    "counting as `reach`, beyond which no link is made; then the next among the roots that are left"
+    f"least sum of squared distances: the first {LEADING} couplings and exponents of a root are compared, each relative to "
+    f"its size (couplings: the largest over the last {WINDOWS[-1]} steps, for they may pass through zero), with what is "
+    f"expected of the track: its last step, its mean over the last {WINDOWS[1]} or {WINDOWS[2]} steps, or its step "
+    f"{WINDOWS[-1]} before, whichever has been nearest so far. Of all chains of roots the one with the least sum of squared "
+    "distances is a track, a step without root counting as `reach`, beyond which no link is made; then the next "
+    "among the roots that are left"
 )
 
 
@@ -87,7 +88,8 @@ def _best_chain(
     steps: tuple[Step, ...], prints: list[np.ndarray], free: list[set[int]], reach: float
 ) -> _Path | None:
     """The chain of free roots with the least cost, steps before its first and after its last root included; by
-    keeping, for every root, the best chain that ends there. A chain starts at a physical root and may miss one step at a time."""
+    keeping, for every root, the best chain that ends there. A chain starts at a physical root and may miss one step
+    at a time."""
     ending: list[dict[int, _Path]] = []
     best: _Path | None = None
     for s, step in enumerate(steps):

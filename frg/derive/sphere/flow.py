@@ -16,8 +16,8 @@ from frg.derive.loops import LoopBook
 from frg.derive.sphere.action import AbstractAction, CouplingAction, FunctionAction, action_of
 from frg.derive.sphere.cutoff import Regulated, matter_traces, regulated
 from frg.derive.sphere.functionals import Functionals
+from frg.derive.sphere.heat import heat_sum
 from frg.derive.sphere.hessian import Geometry, Trace, curvature, feynman_traces, landau_traces, whole_fields
-from frg.derive.sphere.spectra import generic_coefficients, heat_coefficients, shifted
 from frg.derive.sphere.taylor import taylor_traces
 from frg.errors import NotYet, Place
 from frg.language.gravity import Gravity
@@ -113,28 +113,6 @@ def _runs(expression: sympy.Expr, action: AbstractAction) -> bool:
     return bool({s.name for s in expression.free_symbols} & {c.name for c in action.truncation.couplings})
 
 
-def heat_sum(truncation: Truncation, trace: Regulated, upto: int) -> list[sympy.Expr]:
-    """c_0 .. c_upto of the regulator's argument of a trace: exact in whole dimensions, and for any real dimension up
-    to n = 1."""
-    import sympy
-
-    d = truncation.value(truncation.dimension)
-    if d.is_Integer and d >= 3:
-        rational = heat_coefficients(trace.bundle, int(d), upto)
-        plain = [sympy.Rational(c.numerator, c.denominator) for c in rational]
-    elif upto <= 1:
-        plain = list(generic_coefficients(trace.bundle.kind, truncation.dimension))[: upto + 1]
-    else:
-        raise NotYet(
-            "powers of R beyond the first in a dimension that is no whole number above 2",
-            remedy="use a whole dimension, or an action linear in R",
-        )
-    a = trace.endomorphism
-    return [
-        sympy.Add(*(plain[n - m] * (-a) ** m / sympy.factorial(m) for m in range(n + 1))) for n in range(len(plain))
-    ]
-
-
 # ---- one running function -----------------------------------------------------------------------
 
 LONGEST = 40  # powers of R kept in sums over n that do not end (odd dimensions)
@@ -153,6 +131,7 @@ def _function_flow(
     left = -action.rate(action.jet(0))
     prefactor = 1 / (4 * sympy.pi) ** (truncation.dimension / 2)
     highest: int | None = None
+    under: tuple[tuple[sympy.Expr, sympy.Expr], ...] = ()
     if functionals.closed:
         quotients, highest = _closed_quotients(truncation, traces, functionals)
         running = [(n, q) for n, q in quotients if _runs(q, action)]
@@ -164,6 +143,7 @@ def _function_flow(
             balance += prefactor * n * others
     else:
         value, highest = taylor_traces(truncation, traces, functionals)
+        under = tuple((t.numerator, t.denominator) for t in traces)
         balance = left + prefactor * value
     expressions = [balance, *(loop.integrand for loop in book.loops)]
     flow = FunctionFlow(
@@ -173,7 +153,7 @@ def _function_flow(
     return FlowEquations(
         truncation=truncation, regulator=book.regulator, functions=(flow,), couplings=(), potential=None,
         invariants=None, anomalous=(), odd=None, loops=tuple(book.loops), positivity=_positivity(traces, action),
-        closed=not book.loops, highest_order=highest,
+        closed=not book.loops, highest_order=highest, quotients=under,
         signs=((-action.jet(1), "Newton's coupling -1/(16 pi f') is negative"),),
     )
 

@@ -66,7 +66,6 @@ class Functionals:
     def open(self, n: int, numerator: sympy.Expr, denominator: sympy.Expr, *, decay: int = 1) -> sympy.Expr:
         """Q_(d/2-n)[numerator/denominator] by quadrature, n = 0 or 1, the t-derivatives in the numerator
         taken out of the integrals."""
-        import sympy
 
         rates = sorted((s for s in numerator.free_symbols if s.name.startswith(symbols.RATE)), key=str)
         rest = numerator.subs(dict.fromkeys(rates, 0))
