@@ -210,7 +210,9 @@ class PolynomialSearch(AbstractSearch):
     def _random(self, rng: np.random.Generator, count: int, active: np.ndarray) -> np.ndarray:
         """Starts with random signs and logarithmic sizes that fall with the power of the coordinate."""
         size = self.flow.size
-        magnitude = 10.0 ** rng.uniform(-2.0, 0.5, (count, size)) * 0.7 ** self._powers
+        # couplings without a natural unit can be small: a fixed point of order epsilon near a critical dimension
+        least = -2.0 if self.flow.block is not None else -4.0
+        magnitude = 10.0 ** rng.uniform(least, 0.5, (count, size)) * 0.7 ** self._powers
         starts = rng.choice([-1.0, 1.0], (count, size)) * magnitude
         for position in self._positive:
             starts[:, position] = 10.0 ** rng.uniform(-1.3, 0.6, count)

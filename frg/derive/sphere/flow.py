@@ -92,11 +92,11 @@ def _factored(traces: list[Trace], action: AbstractAction) -> list[Trace]:
     collected: dict[tuple[str, object, sympy.Expr], Trace] = {}
     for trace in traces:
         _, factors = sympy.factor_list(trace.operator, delta(), curvature())
-        running = [(f, k) for f, k in factors if _runs(f, action)]
-        constant = [(f, k) for f, k in factors if not _runs(f, action) and f.has(delta())]
-        parts = [(f, sympy.Integer(k)) for f, k in constant]
-        if running or not parts:
-            rest = sympy.cancel(trace.operator / sympy.Mul(*(f**k for f, k in constant)))
+        parts = [(f, sympy.Integer(k)) for f, k in factors if f.has(delta()) and not _runs(f, action)]
+        rest = sympy.cancel(trace.operator / sympy.Mul(*(f**k for f, k in parts)))
+        if _runs(rest, action) and not rest.has(delta()):
+            parts = [(trace.operator, sympy.Integer(1))]  # a running factor is part of R_k
+        elif rest.has(delta()):
             parts.append((rest, sympy.Integer(1)))
         for operator, power in parts:
             key = (trace.bundle.kind, trace.bundle.excluded, sympy.factor(operator))
