@@ -120,6 +120,10 @@ class Examiner:
         b, J, M = (np.asarray(v) for v in self._system(c, args))
         J, M = J[np.ix_(active, active)], M[np.ix_(active, active)]
         algebraic = self.flow.algebraic[active]
+        if not (np.isfinite(J).all() and np.isfinite(M).all()):
+            nothing = np.zeros((int(active.sum()), 0), dtype=complex)
+            return Measured(g=np.where(active, c * scale, 0.0), active=active, scale=scale, beta=np.full(len(J), np.nan),
+                            spectrum=Spectrum(np.zeros(0, dtype=complex), nothing, nothing, np.inf), step=np.inf)
         found = spectrum(J, M, scale[active], algebraic, self._columns(c)[active])
         beta = _beta(b[active], M, algebraic)
         return Measured(g=np.where(active, c * scale, 0.0), active=active, scale=scale, beta=beta,

@@ -65,8 +65,8 @@ class OpenCurvatureSearch(CurvatureSearch):
             pole = f" (at R = 0 for y = {zeros.pole:.3g})" if zeros.pole is not None else ""
             reason = (
                 ": at the fixed point of the flat shape a denominator of the traces vanishes at |R| = "
-                f"{zeros.nearest:.2g}{pole}, inside the expansion disc and depending on y, so that the terms of the expansion grow {growth:.2g}-fold "
-                "with every order"
+                f"{zeros.nearest:.2g}{pole}, inside the expansion disc and depending on y, so that the terms of the expansion "
+                f"grow {growth:.2g}-fold with every order"
             )
         raise InputError(
             f"a variation of the shape ({self.equations.regulator.name}) is not meaningful beyond order {highest}, and order "

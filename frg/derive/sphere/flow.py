@@ -34,6 +34,9 @@ def sphere_flow(truncation: Truncation, book: LoopBook) -> FlowEquations:
     # heat-kernel coefficients are those of one dimension: it enters by its value
     truncation = dataclasses.replace(truncation, dimension=truncation.value(truncation.dimension))
     book.dimension = truncation.dimension
+    gravity = dataclasses.replace(
+        gravity, endomorphism={k: truncation.value(v) for k, v in gravity.endomorphism.items()}
+    )
     action = action_of(truncation)
     try:
         traces = [regulated(t, action, gravity) for t in _traces(truncation, action, gravity)]
