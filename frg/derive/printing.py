@@ -6,6 +6,7 @@ import re
 from collections.abc import Callable
 from typing import TYPE_CHECKING
 
+from frg.derive import symbols
 from frg.derive.equations import FlowEquations
 from frg.derive.flat.lagrangian import HALF_SQUARE
 
@@ -39,7 +40,8 @@ def _rows(
 
     for flow in equations.functions:
         arguments = ", ".join(rename(c) for c in flow.coordinates)
-        rows.append((f"{rate}{rename(flow.name)}({arguments})", shown(flow.rhs)))
+        # an implicit flow is an expression that vanishes: d_t of the function stands in it
+        rows.append(("0" if flow.rates else f"{rate}{rename(flow.name)}({arguments})", shown(flow.rhs)))
     if equations.potential is not None:
         rows.append((f"{rate}{rename(equations.potential.name)}", shown(equations.potential.rhs)))
         rows += _coefficients(equations, rename, show)
@@ -139,6 +141,8 @@ def _latex_name(name: str) -> str:
     base, orders = parts
     if base == "loop":
         return rf"\ell_{{{orders[0] + 1}}}"
+    if base.startswith(symbols.RATE):
+        return rf"{{\partial_t {_latex_name(symbols.jet(base.removeprefix(symbols.RATE), orders).name)}}}"
     base = special.get(base, _latex_plain(base))
     if len(orders) == 1:
         primes = "'" * orders[0]

@@ -43,8 +43,10 @@ def denominator_zeros(equations: FlowEquations, couplings: dict[str, float]) -> 
         if not any(denominator.has(j) for j in jets):
             continue
         bottom = denominator.subs(symbols.shape(0), propagator - symbols.momentum()).subs(jets)
-        terms = sympy.Poly(sympy.expand(bottom), R).all_coeffs()
-        values = np.array([sympy.lambdify(propagator, c, "numpy")(P) * np.ones_like(P) for c in terms])
+        polynomial = sympy.Poly(sympy.expand(bottom), R, propagator)
+        values = np.zeros((polynomial.degree(R) + 1, len(P)))  # highest power of R first
+        for (i, j), c in polynomial.terms():
+            values[-1 - i] += float(c) * P**j
         for column in values.T:
             nearest = min(nearest, float(np.min(np.abs(np.roots(column)), initial=np.inf)))
         change = np.flatnonzero(np.sign(values[-1][:-1]) != np.sign(values[-1][1:]))

@@ -297,6 +297,8 @@ def _solved(
         all of them would be slow."""
         if e.is_Rational or (e.is_Symbol and e in couplings):
             return e
+        if e.is_number and (e.is_Add or e.is_Mul or (e.is_Pow and e.exp.is_Integer)):
+            return e.func(*(plain(a) for a in e.args))
         if not e.free_symbols & couplings:
             return next((k for k, v in back.items() if v == e), None) or _letter(back, e)
         if e.is_Add and grouped:
