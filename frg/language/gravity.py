@@ -17,6 +17,13 @@ FAMILIES = ("tensor", "vector", "scalar")
 MATTER = ("scalars", "dirac", "vectors")
 
 
+def no_matter() -> dict[str, sympy.Expr]:
+    """No minimally coupled fields."""
+    import sympy
+
+    return dict.fromkeys(MATTER, sympy.Integer(0))
+
+
 @dataclass(frozen=True, kw_only=True)
 class Gauge:
     """F_m = D^n h_mn - (1 + beta)/d D_m h with the term F_m F^m/(2 alpha); alpha = 0: F_m = 0 strictly. `beta` is
@@ -41,23 +48,21 @@ class Gravity:
     endomorphism: dict[str, sympy.Expr]
     parametrisation: str = "linear"
     one_loop: bool = False
-    matter: dict[str, sympy.Expr] = field(default_factory=dict)
+    matter: dict[str, sympy.Expr] = field(default_factory=no_matter)
 
 
 def read_gravity(document: Document, metric: str, parameters: Mapping[str, sympy.Expr]) -> Gravity:
     """The section, or its defaults: alpha = beta = 0, cutoff Ib, linear, no matter."""
-    import sympy
-
     document.check_keys(
         ("gravity",), ("gauge", "cutoff", "endomorphism", "parametrisation", "approximation", "matter")
     )
-    matter = {name: sympy.Integer(0) for name in MATTER}
+    matter = no_matter()
     path: Path = ("gravity", "matter")
-    if document.get(path) is not None:
-        document.table(path)
-        document.check_keys(path, MATTER)
-        for name in document.table(path):
-            matter[name] = _number(document, (*path, name), parameters)
+    if not isinstance(document.get(path), (dict, type(None))):
+        document.fail("matter is counted by kind", "write matter = { scalars = 4, dirac = 0, vectors = 1 }", path)
+    document.check_keys(path, MATTER)
+    for name in document.table(path):
+        matter[name] = _number(document, (*path, name), parameters)
     return Gravity(
         metric=metric,
         gauge=_gauge(document, parameters),
@@ -87,7 +92,8 @@ def _gauge(document: Document, parameters: Mapping[str, sympy.Expr]) -> Gauge:
     if type(value) is str:
         document.choice(path, ("harmonic",), "harmonic")
         return Gauge(alpha=sympy.Integer(1), beta=None)
-    document.table(path)
+    if not isinstance(value, dict):
+        document.fail(f"no gauge is called {value}", 'write gauge = "harmonic" or { alpha = 0, beta = 0 }', path)
     document.check_keys(path, ("alpha", "beta"))
     for key in ("alpha", "beta"):
         if document.get((*path, key)) is None:

@@ -171,6 +171,8 @@ def _claim_names(document: Document, *, typed: bool, sphere: bool) -> dict[str, 
                 path,
                 key=True,
             )
+        if kinds.get(name) == "curvature":
+            document.fail(f"{name!r} is the curvature scalar of the sphere", "choose another name", path, key=True)
         if name in kinds:
             document.fail(f"{name!r} is already the name of a {kinds[name]}", "rename one of them", path, key=True)
         kinds[name] = kind
@@ -222,9 +224,17 @@ def _check_coupling_names(document: Document, function: str, kinds: Mapping[str,
 
 def _lagrangian(document: Document, kinds: Mapping[str, str], running: tuple[Running, ...]) -> sympy.Expr:
     path = ("action", "lagrangian")
+    example = '"f(R)"' if "curvature" in kinds.values() else '"d(phi,mu)^2/2 + U(rho)"'
     if document.get(path) is None:
-        document.fail("[action] has no lagrangian", 'add lagrangian = "d(phi,mu)^2/2 + U(rho)"', ("action",), key=True)
-    text = document.string(path, '"d(phi,mu)^2/2 + U(rho)"')
+        document.fail("[action] has no lagrangian", f"add lagrangian = {example}", ("action",), key=True)
+    text = document.string(path, example)
+    operator = re.search(r"(?<!\w)d\s*\(\s*\w+\s*,[^()]*\)", text) if "curvature" in kinds.values() else None
+    if operator is not None:
+        raise InputError(
+            "derivatives of fields have no place in an action of the metric",
+            remedy="remove them, and count matter in [gravity] matter",
+            place=place_of(text, operator.start(), operator.end(), document.value_place(path)),
+        )
     plain = ("parameter", "field", "definition", "coupling", "wave function", "curvature")
     names = NameTable(
         names={n: k for n, k in kinds.items() if k in plain},

@@ -159,27 +159,36 @@ def read_fields(document: Document, parameters: Mapping[str, sympy.Expr]) -> tup
 
 def read_metric(document: Document, *, sphere: bool) -> str | None:
     """The name of the metric; it belongs to the sphere, and the sphere to it."""
-    names = []
-    for name, value in document.table(("fields",)).items():
-        kind = value.get("kind") if isinstance(value, dict) else value
-        if kind == "metric":
-            names.append(name)
-        elif sphere:
-            document.fail(
-                f"{name} beside a metric is not supported: fields on the sphere are minimally coupled and enter by number",
-                "write [gravity] matter = { scalars = 1 }", ("fields", name), key=True,
-            )
+    fields = document.table(("fields",))
+    kinds = {name: value.get("kind") if isinstance(value, dict) else value for name, value in fields.items()}
+    metrics = [name for name, kind in kinds.items() if kind == "metric"]
     if not sphere:
-        if names:
-            document.fail('a metric needs geometry = "sphere"', 'add geometry = "sphere" to [space]', ("fields", names[0]))
+        remedy = 'write geometry = "sphere" in [space]'
+        if document.get(("flow",)) is not None:
+            remedy = "remove it: [flow] gives the beta functions themselves"
+        if metrics:
+            document.fail('a metric needs an [action] and geometry = "sphere"', remedy, ("fields", metrics[0]))
         if document.get(("gravity",)) is not None:
-            document.fail(
-                '[gravity] needs geometry = "sphere"', 'add geometry = "sphere" to [space]', ("gravity",), key=True
-            )
+            document.fail('[gravity] needs an [action] and geometry = "sphere"', remedy, ("gravity",), key=True)
         return None
-    if len(names) != 1:
-        document.fail("a truncation of gravity has one metric", 'write [fields] with g = "metric"', ("fields",), key=True)
-    return str(names[0])
+    for name, kind in kinds.items():
+        if kind not in ("scalar", "dirac", "metric"):
+            remedy = f"remove {name}" if metrics else f'write {name} = "metric"'
+            document.fail(f"the field {name} is no metric", remedy, ("fields", name), key=True)
+        if kind == "metric" and isinstance(fields[name], dict):
+            document.check_keys(("fields", name), ("kind",))
+        if kind != "metric":
+            document.fail(
+                f"{name} is a {kind} field: matter on the sphere is minimally coupled and enters by number",
+                f"remove {name} and write [gravity] matter = {{ scalars = 1 }}", ("fields", name), key=True,
+            )
+    if not metrics:
+        document.fail('geometry = "sphere" needs a metric', 'write [fields] with g = "metric"', ("space", "geometry"))
+    if len(metrics) > 1:
+        document.fail(
+            f"{metrics[1]} is a second metric", f"remove {metrics[1]} or {metrics[0]}", ("fields", metrics[1]), key=True
+        )
+    return metrics[0]
 
 
 def read_definitions(document: Document, known: Mapping[str, str]) -> dict[str, sympy.Expr]:
@@ -200,7 +209,8 @@ def read_running(
     symbol: str,
     coordinates: Mapping[str, object] | None,
 ) -> tuple[Running, ...]:
-    """All running quantities. `coordinates` are the definitions a function may be of; None: free names."""
+    """All running quantities. `coordinates` are the definitions a function may be of (on the sphere the curvature
+    alone, which has none); None: free names."""
     found: list[Running] = []
     for name, value in document.table(("running",)).items():
         path = ("running", name)
@@ -303,6 +313,9 @@ def _coordinates(document: Document, path: Path, known: Mapping[str, object] | N
     names = coordinate_names(document, path)
     for name in names:
         if known is not None and name not in known:
+            if list(known.values()) == [None]:
+                (only,) = known
+                document.fail(f"{path[-1]} is a function of {name!r}", f'write of = "{only}"', (*path, "of"))
             document.fail(
                 f"{path[-1]} is a function of {name!r}, which is not in [definitions]",
                 suggestion(name, known, f'add {name} = "…" in the fields to [definitions]'),

@@ -185,7 +185,7 @@ def smoothest_chain(history: list[list[Point]], names: tuple[str, ...]) -> list[
 
 
 def _relative(a: np.ndarray, b: np.ndarray) -> float:
-    return float(np.linalg.norm(a - b) / max(np.linalg.norm(a), np.linalg.norm(b), 1e-300))
+    return float(np.linalg.norm(a - b)) / max(float(np.linalg.norm(a)), float(np.linalg.norm(b)), 1e-300)
 
 
 def newton_and_cosmological(g: np.ndarray) -> dict[str, float]:

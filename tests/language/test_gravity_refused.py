@@ -177,6 +177,7 @@ def test_bad_actions_with_a_function(pairs, fragment, expected):
         ("((2*Lambda - R)^100 + 1)^100/G", None, ["too many terms"]),
         ("R/(1 + G)^900 + 1/(Lambda + (1 + G)^900)^900", None, ["too many terms"]),
         ("exp((Lambda + G)^900)*R", None, ["too many terms"]),
+        ("R/(" + "*".join(f"({k} + G)^900" for k in range(1, 60)) + ") + 1/Lambda", None, ["too many terms"]),
     ],
 )  # fmt: skip
 def test_bad_actions_with_couplings(action, fragment, expected):
