@@ -33,6 +33,7 @@ ALWAYS_SHOWN = 4  # exponents drawn even where fewer are relevant
 FAR_OFF = 15  # beyond this multiple of the median a linear axis would flatten everything else
 KINDS = {"physical": ("o", BLUE), "spurious": ("x", BLACK), "gaussian": ("+", GREEN)}
 UNDATED: dict[str, dict[str, Any]] = {".svg": {"Date": None}, ".pdf": {"CreationDate": None}, ".png": {}}
+CURVATURE = "R"  # the coordinate of functions of the curvature scalar
 GREEK = {"rho": r"$\rho$", "tau": r"$\tau$", "phi": r"$\phi$", "R": r"$R$"}
 
 
@@ -78,7 +79,13 @@ def plain(text: str) -> str:
 
 
 def _coordinate(label: str) -> str:
-    return f"{GREEK.get(label, plain(label))} in units of $k$"
+    unit = "k^2" if label == CURVATURE else "k"
+    return f"{GREEK.get(label, plain(label))} in units of ${unit}$"
+
+
+def _function(label: str) -> tuple[str, str]:
+    """(what the function over this coordinate is called, its letter)."""
+    return ("function", "f") if label == CURVATURE else ("potential", "u")
 
 
 def draw_exponents(run: Run, ax: Axes | None = None) -> Axes:
@@ -204,7 +211,8 @@ def draw_potential(point: FixedPoint, ax: Axes | None = None) -> Axes:
     ax.plot(profile.x, profile.potential - start, LINES[0], color=BLUE, linewidth=1.3)
     ax.axhline(0, color=BLACK, linewidth=0.6)
     first = f"{profile.x[0]:g}" if len(profile.x) else "0"
-    ax.set(xlabel=_coordinate(profile.x_label), ylabel=rf"potential $u - u({first})$")
+    what, u = _function(profile.x_label)
+    ax.set(xlabel=_coordinate(profile.x_label), ylabel=rf"{what} ${u} - {u}({first})$")
     ax.ticklabel_format(axis="y", scilimits=(-2, 3), useMathText=True)
     return ax
 
@@ -217,7 +225,8 @@ def draw_slope(point: FixedPoint, ax: Axes | None = None) -> Axes:
     ax.axhline(0, color=BLACK, linewidth=0.6)
     # written out: with text kept as text, the prime of the formula font shows as a zero elsewhere
     name = GREEK.get(profile.x_label, plain(profile.x_label))
-    ax.set(xlabel=_coordinate(profile.x_label), ylabel=rf"slope $\mathrm{{d}}u/\mathrm{{d}}${name}")
+    _, u = _function(profile.x_label)
+    ax.set(xlabel=_coordinate(profile.x_label), ylabel=rf"slope $\mathrm{{d}}{u}/\mathrm{{d}}${name}")
     ax.ticklabel_format(axis="y", scilimits=(-2, 3), useMathText=True)
     return ax
 
@@ -239,7 +248,7 @@ def draw_eigenfunctions(point: FixedPoint, ax: Axes | None = None) -> Axes:
         ax.plot(profile.x, values, linestyle=LINES[j % 6], color=COLOURS[j % 6], linewidth=1.2,
                 label=rf"$\theta_{{{j + 1}}} = {theta.real:.4g}{imaginary}$")
     ax.axhline(0, color=BLACK, linewidth=0.6)
-    ax.set(xlabel=_coordinate(profile.x_label), ylabel=r"eigenfunction $\delta u$ (scaled to 1)")
+    ax.set(xlabel=_coordinate(profile.x_label), ylabel=rf"eigenfunction $\delta {_function(profile.x_label)[1]}$ (scaled to 1)")
     ax.legend(frameon=False, fontsize="small", loc="upper left", bbox_to_anchor=(1.0, 1.0))
     return ax
 

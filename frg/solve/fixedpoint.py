@@ -279,6 +279,8 @@ def _profile_reach(flow: Flow, g: np.ndarray, args: Arguments, unit: float) -> f
         return float(args.box)
     if isinstance(block, Taylor) and block.moving:
         return 2 * float(block.expansion_point(g[: block.size]))
+    if flow.equations.truncation.gravity is not None:
+        return unit  # about the radius of convergence of functions of the curvature
     return 2 * unit if isinstance(block, Taylor) else 0.0
 
 
