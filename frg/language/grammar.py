@@ -9,12 +9,12 @@ atom    = number | name | name "(" sum { "," sum } ")" | "(" sum ")"
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterable
+from collections.abc import Callable
 from typing import TYPE_CHECKING, TypeVar
 
 from frg.errors import InputError, Place
 from frg.language.algebra import GIVING_UP, Refused, SafeAlgebra, check_result
-from frg.language.names import ELEMENTARY, NameTable, is_name, listing, suggestion
+from frg.language.names import ELEMENTARY, NameTable, listing, suggestion
 from frg.language.tokens import Token, place_of, tokenize
 from frg.language.wording import expression_text
 
@@ -43,22 +43,6 @@ def parse(text: str, *, names: NameTable, place: Place) -> sympy.Expr:
             return again
         expression = again
     raise parser.error("the expression has no settled form", "simplify its numbers and powers", 0, len(text))
-
-
-def parse_custom_shape(text: str, parameters: Iterable[str], *, place: Place | None = None) -> sympy.Expr:
-    """A regulator shape s(y) in `y` and the named parameters, for example "a*exp(-y)*(1+b*y)"."""
-    where = place or Place(source="regulator")
-    table = {"y": "variable"}
-    for name in parameters:
-        if not is_name(name) or name in table or name in ELEMENTARY or name in ("pi", "diff"):
-            raise InputError(
-                f"{name!r} cannot name a parameter of a regulator shape",
-                remedy="use letters, digits and underscores, not y or a function's name",
-                place=where,
-            )
-        table[name] = "parameter"
-    names = NameTable(names=table, advice="give its value after the expression, as in custom:a*exp(-y),a=1")
-    return parse(text, names=names, place=where)
 
 
 class _Parser:

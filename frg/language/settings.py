@@ -5,9 +5,9 @@ from __future__ import annotations
 import dataclasses
 
 from frg.language.document import Document, shown
-from frg.language.grammar import parse_custom_shape
 from frg.language.names import is_name, suggestion
 from frg.language.sections import exact_number
+from frg.language.shapetext import parse_custom_shape
 from frg.language.toml_places import Path
 from frg.language.truncation import RegulatorChoice, StudySettings
 from frg.language.values import check_orders, number_from_text, orders_from_text, regulator_choice_from_text

@@ -51,7 +51,7 @@ def build_regulator(choice: RegulatorChoice) -> AbstractRegulator:
 
 
 def _custom(choice: RegulatorChoice) -> AbstractRegulator:
-    from frg.language.grammar import parse_custom_shape
+    from frg.language.shapetext import parse_custom_shape
 
     assert choice.expression is not None
     values = tuple((name, float(value)) for name, value in choice.parameters.items())

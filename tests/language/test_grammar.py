@@ -11,8 +11,9 @@ from hypothesis import strategies as st
 
 from frg.errors import InputError, Place
 from frg.language.algebra import Refused, constant_value, substitute
-from frg.language.grammar import parse, parse_custom_shape
+from frg.language.grammar import parse
 from frg.language.names import NameTable
+from frg.language.shapetext import parse_custom_shape
 from frg.language.wording import expression_text
 
 x, y, rho, tau = sympy.symbols("x y rho tau")

@@ -124,7 +124,7 @@ def test_parameters_out_of_range_are_refused(make, said: str) -> None:  # type: 
     ],
 )
 def test_custom_shapes_that_are_no_regulators_are_refused(text: str, said: str) -> None:
-    from frg.language.grammar import parse_custom_shape
+    from frg.language.shapetext import parse_custom_shape
 
     with pytest.raises(InputError, match=said) as caught:
         Custom(expression=parse_custom_shape(text, []))
