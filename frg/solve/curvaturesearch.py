@@ -30,6 +30,7 @@ COMPLETE = 6  # highest order at which the box is searched for all fixed points
 LOWEST = 3  # where histories begin
 PERIOD = 8
 FOLLOWED = 8  # fixed points of the order before that are followed
+KEPT = 7  # fixed points of an order that are kept (--all keeps all)
 STARTS = 16  # a compiled call
 LEADING = 3
 Point = dict[str, float]
@@ -126,7 +127,14 @@ class CurvatureSearch(PolynomialSearch):
         batch = np.where(active, np.array(starts), 0.0)
         landing = self._newton.run(batch, active, self.args, np.zeros((0, self.flow.size)))
         good = np.isfinite(landing.unknowns).all(axis=1) & (landing.step < 1e-7)
-        return landing.unknowns[good], {"starts": len(batch), "converged": int(good.sum())}, notes
+        found = distinct_rows(landing.unknowns[good], np.zeros((0, self.flow.size)), self.settings.duplicate)
+        counts = {"starts": len(batch), "converged": int(good.sum())}
+        if len(found) > KEPT and self.settings.rounds <= 4:
+            # far ones say nothing about the branch, and a study of many orders would mostly store their eigenvectors
+            far = np.max(np.abs(found - rows[-1])[:, :LEADING], axis=1)
+            counts["farther ones set aside"] = len(found) - KEPT
+            found = found[np.sort(np.argsort(far)[:KEPT])]
+        return found, counts, notes
 
     def _vector(self, point: Point) -> np.ndarray:
         return np.array([point.get(name, 0.0) for name in self.flow.names])
