@@ -243,11 +243,15 @@ class PolynomialSearch(AbstractSearch):
             c = m.g / scale
             if self._moving and np.max(np.abs(np.delete(c, self._positive))) < 1e-9:
                 continue
-            same = (np.max(np.abs(c - k.g / scale)) <= self.settings.duplicate * max(np.max(np.abs(c)), 1e-12)
-                    for k in kept)
-            if not any(same):
+            if not any(self._same(c, k.g / scale) for k in kept):
                 kept.append(m)
         return kept
+
+    def _same(self, a: np.ndarray, b: np.ndarray) -> bool:
+        """Equal to the relative tolerance for duplicates, or both zero to that of the Gaussian fixed point."""
+        size = max(float(np.max(np.abs(a))), 1e-12)
+        zero = max(size, float(np.max(np.abs(b)))) < self.settings.judgement.gaussian
+        return zero or bool(np.max(np.abs(a - b)) <= self.settings.duplicate * size)
 
 
 def distinct_rows(rows: np.ndarray, known: np.ndarray, tolerance: float) -> np.ndarray:

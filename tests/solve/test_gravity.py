@@ -200,3 +200,11 @@ def test_another_shape_is_refused_at_order_eight_with_the_reason(shelf) -> None:
         make_search(problem.equations, (8,), search_settings(thorough=False))
     assert "vanishes at |R| = 0.0" in caught.value.message and "endomorphism" in caught.value.remedy
     assert caught.value.place.source is not None
+
+
+@pytest.mark.parametrize("regulator", ["gaussian", "theta:power=2"])
+def test_the_gaussian_fixed_point_is_listed_once(shelf, regulator: str) -> None:
+    """Its flow is quadratic in G to leading order, so that searches end near it at many distances."""
+    found = solve(shelf / "einstein_hilbert.toml", regulator=regulator)
+    assert [p.kind for p in found.fixed_points].count("gaussian") == 1
+    assert len(physical(found)) == 1
